@@ -1,0 +1,153 @@
+"""A scenario as arrays: what each stage makes, converts, and what may be added to it."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from harmonic_planner.chain.allowances import Allowance, allowance
+from harmonic_planner.chain.lines import LineGrid, grid_for, output_limits_dbc
+from harmonic_planner.model import Phases, Scenario
+from harmonic_planner.physics.amplifiers import amplifier_lines
+from harmonic_planner.physics.conversion import conversion_matrix, device_lines
+
+Array = NDArray[np.float64]
+
+
+@dataclass(frozen=True)
+class StageArrays:
+    """One stage on the line grid; amplitudes, or powers where the chain adds powers.
+
+    Attributes
+    ----------
+    carrier : int
+        Array index of the wanted line at the stage's output.
+    conversion : (lines, lines) float
+        Output line per unit of input residual; the row of the carrier is zero (what lands there is `spread`).
+    spread : (lines,) float
+        What each residual puts onto the carrier.
+    device : (lines,) float
+        Lines of the device itself, relative to the wanted one; the carrier is zero.
+    amplifier : (lines,) float
+        Lines the amplifier adds behind the filter.
+    own : (lines,) bool
+        Lines that the device makes by itself: multiples of its input carrier.
+    allowance : Allowance
+        Mismatch and termination [dB].
+    mismatch, termination : float
+        The same as factors of the quantity that is added (amplitude or power).
+    limit : (lines,) float
+        Limit at this stage's output, same quantity; infinite where nothing is asked.
+    """
+
+    carrier: int
+    conversion: Array
+    spread: Array
+    device: Array
+    amplifier: Array
+    own: NDArray[np.bool_]
+    allowance: Allowance
+    mismatch: float
+    termination: float
+    limit: Array
+
+
+@dataclass(frozen=True)
+class ChainArrays:
+    """The whole chain on the line grid.
+
+    Attributes
+    ----------
+    exponent : int
+        1 where amplitudes add (worst-case), 2 where powers add (average).
+    source : (lines,) float
+        The source's unwanted lines relative to its carrier.
+    low_hz, high_hz : (lines,) float
+        Span of each line [Hz].
+    """
+
+    grid: LineGrid
+    phases: Phases
+    exponent: int
+    source: Array
+    low_hz: Array
+    high_hz: Array
+    stages: tuple[StageArrays, ...]
+
+    def from_db(self, level_db: Array | float) -> Array:
+        """Turn dB into the quantity that is added."""
+        return np.asarray(10.0 ** (np.asarray(level_db, dtype=float) * self.exponent / 20))
+
+    def to_db(self, quantity: Array | float) -> Array:
+        """Turn the quantity that is added into dB; zero gives −inf."""
+        with np.errstate(divide="ignore"):
+            return np.asarray(20.0 / self.exponent * np.log10(np.asarray(quantity, dtype=float)))
+
+
+def assemble(scenario: Scenario, *, phases: Phases) -> ChainArrays:
+    """Turn `scenario` into arrays on its line grid.
+
+    Parameters
+    ----------
+    scenario : Scenario
+    phases : {"worst-case", "average"}
+        Whether paths into one line add as amplitudes or as powers.
+
+    Returns
+    -------
+    ChainArrays
+    """
+    grid = grid_for(scenario)
+    exponent = 1 if phases == "worst-case" else 2
+    f_low, f_high = scenario.source.frequency_hz
+    low_hz, high_hz = grid.numbers * f_low, grid.numbers * f_high
+    source = np.zeros(grid.count)
+    for line, level_dbc in scenario.source.lines_dbc.items():
+        source[grid.index(line)] = 10 ** (level_dbc * exponent / 20)
+
+    last = len(scenario.stages) - 1
+    stages = []
+    for i, stage in enumerate(scenario.stages):
+        carrier_in = grid.index(scenario.carrier(i - 1)) + 1
+        carrier = grid.index(scenario.carrier(i))
+        device = np.zeros(grid.count)
+        own = np.zeros(grid.count, dtype=bool)
+        if stage.device is None:
+            conversion = np.eye(grid.count)
+        else:
+            conversion = conversion_matrix(
+                stage.device, stage.times, carrier_index=carrier_in, count=grid.count, power=exponent == 2
+            )
+            multiples = np.arange(carrier_in, grid.count + 1, carrier_in)
+            device[multiples - 1] = device_lines(stage.device, stage.times, len(multiples))[1:] ** exponent
+            own[multiples - 1] = True
+        spread = conversion[carrier].copy()
+        conversion[carrier] = 0.0
+        device[carrier] = 0.0
+        own[carrier] = False
+        amplifier = np.zeros(grid.count)
+        if stage.amplifier is not None:
+            amplifier = amplifier_lines(stage.amplifier, carrier_index=carrier + 1, count=grid.count) ** exponent
+            amplifier[carrier] = 0.0
+        allowed = allowance(scenario, i, phases)
+        limit_dbc = np.full(grid.count, np.inf if stage.limit_dbc is None else stage.limit_dbc)
+        if i == last:
+            limit_dbc = np.minimum(limit_dbc, output_limits_dbc(scenario.output, low_hz, high_hz))
+        limit_dbc[carrier] = np.inf
+        stages.append(
+            StageArrays(
+                carrier=carrier,
+                conversion=conversion,
+                spread=spread,
+                device=device,
+                amplifier=amplifier,
+                own=own,
+                allowance=allowed,
+                mismatch=10 ** (allowed.mismatch_db * exponent / 20),
+                termination=10 ** (allowed.termination_db * exponent / 20),
+                limit=10 ** (limit_dbc * exponent / 20),
+            )
+        )
+    return ChainArrays(grid, phases, exponent, source, low_hz, high_hz, tuple(stages))

@@ -1,0 +1,268 @@
+"""The command ``harmonic-planner``: parse, call, show.
+
+Exit statuses: 0 the limits are met, every filter can be built and the self-check passed; 3 planned, but one of these is
+not so; 2 the input cannot be used; 1 the run failed for another reason; 130 and 143 stopped by SIGINT and SIGTERM.
+
+Modules that take long to import (numpy, matplotlib, pydantic and what needs them) are imported inside the commands, so
+that help comes at once.
+"""
+
+import importlib.resources
+import io
+import os
+import signal
+import sys
+import threading
+import traceback
+from collections.abc import Iterator, Sequence
+from contextlib import contextmanager, suppress
+from pathlib import Path
+from types import FrameType
+from typing import Annotated
+
+import typer
+
+from harmonic_planner import __version__
+from harmonic_planner.export import folder
+from harmonic_planner.export.folder import OutputRefusedError, OutputWriteError
+from harmonic_planner.model import PlannerError
+
+PROGRAM = "harmonic-planner"
+SHIPPED = "glacier-sounder.toml"
+DEBUG = "HARMONIC_PLANNER_DEBUG"
+
+_SIGNALS = (signal.SIGINT, signal.SIGTERM)
+
+
+def _example(*commands: str) -> str:
+    """Lay out example commands for the end of a help page, which keeps their lines apart."""
+    return "\b\nExample:\n" + "\n".join(f"  {PROGRAM} {command}" for command in commands)
+
+
+app = typer.Typer(
+    add_completion=False,
+    rich_markup_mode=None,
+    pretty_exceptions_enable=False,
+    context_settings={"help_option_names": ["-h", "--help"]},
+)
+
+
+class StoppedError(BaseException):
+    """A signal asked the program to stop; not an Exception, so that nothing takes it for a fault."""
+
+    def __init__(self, number: int) -> None:
+        super().__init__(number)
+        self.number = number
+
+
+def _show_version(wanted: bool) -> None:
+    """Print the version and stop, when asked."""
+    if wanted:
+        typer.echo(f"{PROGRAM} {__version__}")
+        raise typer.Exit
+
+
+@app.callback(invoke_without_command=True, epilog=_example("new chain.toml", "plan chain.toml --out chain-plan"))
+def overview(
+    context: typer.Context,
+    version: Annotated[  # noqa: ARG001 - its callback does the work
+        bool, typer.Option("--version", callback=_show_version, is_eager=True, help="Show the version and exit.")
+    ] = False,
+) -> None:
+    """Plan a frequency-multiplier chain: what every stage's filter must reject, and which filter can do it."""
+    if context.invoked_subcommand is None:
+        typer.echo(context.get_help())
+        raise typer.Exit(2)
+
+
+@app.command(epilog=_example("plan chain.toml --out chain-plan"))
+def plan(
+    scenario: Annotated[
+        Path | None,
+        typer.Argument(
+            metavar="[SCENARIO]", show_default=False, help=f"Scenario file (TOML). Without it: the shipped {SHIPPED}."
+        ),
+    ] = None,
+    out: Annotated[
+        Path | None,
+        typer.Option(
+            "--out",
+            metavar="DIR",
+            show_default=False,
+            help="Folder for the results: new, empty, or from an earlier run, which is replaced. "
+            "Default: the scenario's name with -plan, in the current folder.",
+        ),
+    ] = None,
+) -> int:
+    """Plan a chain and write the plan, its tables and its figures.
+
+    Exit status 0: limits met, every filter buildable, self-check passed. 3: planned, but one of these is not so."""
+    from harmonic_planner.planning.plan import make_plan
+    from harmonic_planner.scenario import load
+
+    path = shipped_scenario() if scenario is None else scenario
+    asked = load(path)
+    target = Path(f"{path.stem}-plan") if out is None else out
+    folder.check(target)
+    result = make_plan(asked)
+
+    from harmonic_planner.report import terminal
+    from harmonic_planner.report.files import plan_files
+
+    files = plan_files(result)
+    folder.write(target, files)
+    screen = terminal.console()
+    terminal.show_plan(result, screen)
+    screen.print(f"\nPlanned {path}; wrote {len(files)} files to {target}{os.sep}", soft_wrap=True)
+    return result.exit_status
+
+
+@app.command(epilog=_example("lines chain.toml"))
+def lines(
+    scenario: Annotated[Path, typer.Argument(metavar="SCENARIO", show_default=False, help="Scenario file (TOML).")],
+) -> int:
+    """Show the comb of spectral lines at every node of the chain, with its filters as planned."""
+    from harmonic_planner.planning.plan import make_plan
+    from harmonic_planner.scenario import load
+
+    result = make_plan(load(scenario))
+
+    from harmonic_planner.report import terminal
+
+    terminal.show_lines(result, terminal.console())
+    return 0
+
+
+@app.command(epilog=_example("schema > scenario.schema.json"))
+def schema() -> int:
+    """Print the JSON Schema of scenario files."""
+    import json
+
+    from harmonic_planner.scenario import json_schema
+
+    typer.echo(json.dumps(json_schema(), indent=2, ensure_ascii=False))
+    return 0
+
+
+@app.command(epilog=_example("new chain.toml"))
+def new(
+    file: Annotated[Path, typer.Argument(metavar="FILE", show_default=False, help="Scenario file to be written.")],
+) -> int:
+    """Write a commented scenario that plans as it is; an existing file is left alone."""
+    from harmonic_planner.scenario import TEMPLATE
+
+    try:
+        with file.open("x", encoding="utf-8", newline="\n") as stream:
+            try:
+                stream.write(TEMPLATE)
+                stream.flush()
+            except BaseException:
+                file.unlink()
+                raise
+    except FileExistsError:
+        raise OutputRefusedError(f"new {file}: exists already; name a file that does not") from None
+    except OSError as fault:
+        raise OutputWriteError(f"new {file}: cannot be written: {fault.strerror or fault}") from fault
+    typer.echo(f"Wrote {file}. Plan it with: {PROGRAM} plan {file}")
+    return 0
+
+
+def shipped_scenario() -> Path:
+    """Find the scenario that is planned when none is named.
+
+    Returns
+    -------
+    Path
+        Inside an installed package, or in the folder ``scenarios`` beside the package in a checkout.
+
+    Raises
+    ------
+    PlannerError
+        Where the installation lacks it.
+    """
+    package = importlib.resources.files("harmonic_planner")
+    installed = Path(str(package / "scenarios" / SHIPPED))
+    checkout = Path(str(package)).parent / "scenarios" / SHIPPED
+    for path in (installed, checkout):
+        if path.is_file():
+            return path
+    raise PlannerError(f"the shipped scenario {SHIPPED} is missing from this installation; name a scenario file")
+
+
+def main(arguments: Sequence[str] | None = None) -> int:
+    """Run one command.
+
+    Parameters
+    ----------
+    arguments : sequence of str, optional
+        What follows the program's name; taken from the command line when left out.
+
+    Returns
+    -------
+    int
+        The exit status.
+    """
+    for stream in (sys.stdout, sys.stderr):
+        if isinstance(stream, io.TextIOWrapper):
+            stream.reconfigure(errors="replace")  # a terminal that cannot show × shows ?
+    try:
+        with _stopping_on_signals():
+            command = typer.main.get_command(app)
+            args = None if arguments is None else list(arguments)
+            status = command.main(args=args, prog_name=PROGRAM, standalone_mode=False)
+            sys.stdout.flush()
+    except StoppedError as stop:
+        return _fail(128 + stop.number, f"stopped by {signal.Signals(stop.number).name}")
+    except BrokenPipeError:
+        with suppress(OSError, ValueError):
+            os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        return 1
+    except OutputWriteError as fault:
+        return _fail(1, str(fault))
+    except PlannerError as fault:
+        return _fail(2, str(fault))
+    except SystemExit as stop:
+        return stop.code if isinstance(stop.code, int) else 1
+    except Exception as fault:
+        return _fail(*_explain(fault))
+    return status if isinstance(status, int) else 0
+
+
+def _explain(fault: Exception) -> tuple[int, str]:
+    """Give the exit status and the message of a wrong command line, or of a fault nobody expected."""
+    describe = getattr(fault, "format_message", None)  # every fault in a command line has it, in any version of typer
+    if callable(describe):
+        return 2, f"{str(describe()).rstrip('.')}. See: {PROGRAM} --help"
+    if os.environ.get(DEBUG):
+        traceback.print_exc()
+    cause = f"{type(fault).__name__}: {fault}" if str(fault) else type(fault).__name__
+    return 1, f"unexpected fault inside the program: {cause}. For details set {DEBUG}=1 and run again"
+
+
+def _fail(status: int, message: str) -> int:
+    """Write a message to standard error, every line of it marked, and return the status."""
+    with suppress(OSError, ValueError):
+        for line in message.splitlines():
+            shown = "".join(character if character.isprintable() else "?" for character in line)
+            typer.echo(f"error: {shown}", err=True)
+    return status
+
+
+@contextmanager
+def _stopping_on_signals() -> Iterator[None]:
+    """Turn the first SIGINT or SIGTERM into StoppedError, so that what is half done is undone; ignore further ones."""
+    if threading.current_thread() is not threading.main_thread():
+        yield
+        return
+
+    def stop(number: int, _frame: FrameType | None) -> None:
+        for each in _SIGNALS:
+            signal.signal(each, signal.SIG_IGN)
+        raise StoppedError(number)
+
+    before = {each: signal.signal(each, stop) for each in _SIGNALS}
+    try:
+        yield
+    finally:
+        for each, handler in before.items():
+            signal.signal(each, handler)

@@ -1,0 +1,129 @@
+"""What a plan says in words beside its numbers: warnings, assumptions, cautions."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+import numpy as np
+
+from harmonic_planner.chain.assemble import ChainArrays
+from harmonic_planner.chain.levels import CarrierLevels
+from harmonic_planner.chain.propagate import Comb, carrier_spread
+from harmonic_planner.model import Scenario
+from harmonic_planner.physics.conversion import am_slope, check_device, second_order_db
+from harmonic_planner.planning.jobs import Job
+
+_OUTPUT_TOLERANCE_DB = 2.0
+_SECOND_ORDER_GUARD_DB = 6.0
+_POWER_CAUTION_DBM = 30.0
+_SPREAD_NOTE_DB = -60.0
+
+
+def warnings_for(
+    scenario: Scenario,
+    chain: ChainArrays,
+    jobs: Sequence[Job],
+    levels: Sequence[CarrierLevels],
+    combs: Sequence[Comb],
+) -> tuple[str, ...]:
+    """Return what the user should look at, in the order of the chain."""
+    found = []
+    if not scenario.source.lines_dbc:
+        found.append("source.lines: none given, and a real source has harmonics")
+    for stage, job, level in zip(scenario.stages, jobs, levels, strict=True):
+        device = stage.device
+        if device is not None:
+            found += [f"{stage.name}: {text}" for text in check_device(device, stage.times)]
+            if device.drive_dbm is not None:
+                low, high = device.drive_dbm
+                least, most = float(level.drive_dbm.min()), float(level.drive_dbm.max())
+                if least < low:
+                    found.append(f"{stage.name}: driven with {least:.1f} dBm, {low - least:.1f} dB more gain is needed")
+                if most > high:
+                    found.append(f"{stage.name}: driven with {most:.1f} dBm, {most - high:.1f} dB more pad is needed")
+        if stage.filter == "plan" and stage.design.min_bandwidth is not None:
+            floor = job.kit.bandwidth_floor(tuned=stage.design.tuned, drift=stage.design.drift)
+            if stage.design.min_bandwidth < floor:
+                found.append(
+                    f"{stage.name}: min_bandwidth = {stage.design.min_bandwidth:.1%} is below the {floor:.1%} that the "
+                    f"tolerance of {job.kit.name} parts asks for"
+                )
+        amplifier = stage.amplifier
+        if amplifier is not None and amplifier.saturation_dbm is not None:
+            asked = float(level.amplifier_input_dbm.max()) + amplifier.gain_db
+            if asked > amplifier.saturation_dbm:
+                found.append(
+                    f"{stage.name}: the amplifier is driven {asked - amplifier.saturation_dbm:.1f} dB into saturation; "
+                    "lines are carried as if it were linear"
+                )
+    wanted = scenario.output.level_dbm
+    if wanted is not None:
+        low, high = float(levels[-1].output_dbm.min()), float(levels[-1].output_dbm.max())
+        off = max(wanted - low, high - wanted)
+        if off > _OUTPUT_TOLERANCE_DB:
+            found.append(f"output.level = {wanted:g} dBm is asked, {low:.1f} to {high:.1f} dBm come out")
+    found += _second_order(scenario, chain, combs)
+    for stage, spread in zip(scenario.stages, carrier_spread(chain, combs), strict=True):
+        if spread > 0 and (spread_db := float(chain.to_db(spread))) > _SPREAD_NOTE_DB:
+            found.append(f"{stage.name}: residuals land on the carrier at {spread_db:.1f} dBc and spread its level")
+    return tuple(found)
+
+
+def _second_order(scenario: Scenario, chain: ChainArrays, combs: Sequence[Comb]) -> list[str]:
+    """Name the multipliers at which lines of second order may come near a limit."""
+    found = []
+    limit_db = min((float(chain.to_db(s.limit.min())) for s in chain.stages), default=np.inf)
+    for i, (stage, comb) in enumerate(zip(scenario.stages, combs, strict=True)):
+        if stage.device is None:
+            continue
+        amplitude = comb.entering ** (1 / chain.exponent)
+        total = float(np.max(amplitude.sum(axis=-1)))
+        if total <= 0:
+            continue
+        made_db = 40 * np.log10(total) + second_order_db(stage.device, stage.times)
+        for later in scenario.stages[i + 1 :]:
+            if later.device is not None:
+                made_db += 20 * np.log10((later.times + abs(am_slope(later.device, later.times))) / 2)
+        if made_db > limit_db - _SECOND_ORDER_GUARD_DB:
+            found.append(
+                f"{stage.name}: residuals of {20 * np.log10(total):.1f} dBc in all at its input can make lines of second "
+                f"order up to {made_db:.1f} dBc at the output, which the linear sums leave out"
+            )
+    return found
+
+
+def assumptions_for(scenario: Scenario, chain: ChainArrays, jobs: Sequence[Job]) -> tuple[str, ...]:
+    """Return every default and simplification that shaped the plan."""
+    found = list(scenario.defaults)
+    for stage, arrays, job in zip(scenario.stages, chain.stages, jobs, strict=True):
+        allowed = arrays.allowance
+        if stage.filter != "none":
+            found.append(
+                f"{stage.name}: mismatch {allowed.mismatch_db:.1f} dB ({allowed.before.name} |Γ| "
+                f"{allowed.before.reflection:g} behind {allowed.before.pad_db:g} dB, {allowed.after.name} |Γ| "
+                f"{allowed.after.reflection:g} behind {allowed.after.pad_db:g} dB), termination {allowed.termination_db:.1f} dB"
+            )
+        if stage.filter == "plan":
+            origin = "given" if stage.design.unloaded_q else f"of {job.kit.name} resonators (memory)"
+            found.append(f"{stage.name}: windows with an unloaded Q of {job.unloaded_q:.0f}, {origin}")
+        if stage.amplifier is not None:
+            found.append(f"{stage.name}: the amplifier's gain is taken as flat over all lines")
+            if stage.amplifier.saturation_dbm is None:
+                found.append(f"{stage.name}: the amplifier is taken as linear, no saturation given")
+            if not stage.amplifier.lines_dbc:
+                found.append(f"{stage.name}: the amplifier is taken to make no lines of its own")
+    found.append(f"lines are carried up to {float(chain.grid.line(chain.grid.count - 1)):g} times the source")
+    found.append("leakage is counted past each filter; from earlier stages to later inputs it is not")
+    found.append("element values are ideal, with the kit's losses; strays are judged part by part")
+    return tuple(found)
+
+
+def cautions_for(levels: Sequence[CarrierLevels]) -> tuple[str, ...]:
+    """Return the usual cautions where power is high."""
+    highest = max((float(level.output_dbm.max()) for level in levels), default=-np.inf)
+    if highest <= _POWER_CAUTION_DBM:
+        return ()
+    return (
+        f"the chain carries up to {highest:.0f} dBm: RF burns and exposure limits apply; follow local codes and have "
+        "licensed practice check shielding and any radiated emission before power is applied",
+    )

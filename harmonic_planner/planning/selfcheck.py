@@ -1,0 +1,102 @@
+"""Second methods that a plan is checked by before it is shown."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from harmonic_planner.chain.assemble import Array, ChainArrays
+from harmonic_planner.chain.budget import with_margin, worst_excess
+from harmonic_planner.filters.response import nodal_sweep, sweep
+from harmonic_planner.model import Scenario
+from harmonic_planner.physics.waveforms import spectrum
+from harmonic_planner.planning.choice import Built
+from harmonic_planner.planning.jobs import Job, prototype_attenuation
+from harmonic_planner.planning.settle import Settled
+
+_CIRCUIT_DB = 1e-6
+_PROTOTYPE_DB = 1e-6
+_DEEPEST_DB = 200.0
+_IDENTITY = 1e-9
+_SUM_DB = 1e-6
+
+
+@dataclass(frozen=True)
+class Check:
+    """One comparison: what was compared, and whether the difference is within its bound."""
+
+    passed: bool
+    text: str
+
+
+def run_checks(
+    scenario: Scenario, chain: ChainArrays, jobs: Sequence[Job], settled: Settled, margins_db: Sequence[float]
+) -> tuple[Check, ...]:
+    """Run every check on the filters that were settled on; `chain` has the limits as the user gave them."""
+    circuits = [f.built if f.source == "planned" else None for f in settled.filters]
+    needed = settled.needed
+    return (
+        check_identity(scenario),
+        check_circuits(jobs, circuits, needed.required_db),
+        check_prototypes(jobs, circuits, needed.required_db),
+        check_requirement(with_margin(chain, margins_db), needed.required_db, needed.out_of_reach),
+    )
+
+
+def check_identity(scenario: Scenario) -> Check:
+    """Compare G_(N−1) − G_(N+1) with 2·N·F_N, which holds for every memoryless device."""
+    worst = 0.0
+    for stage in scenario.stages:
+        if stage.device is None:
+            continue
+        n = stage.times
+        s = spectrum(stage.device, n, n + 1)
+        worst = max(worst, abs(s.G[n - 1] - s.G[n + 1] - 2 * n * s.F[n]) / abs(2 * n * s.F[n]))
+    return Check(worst < _IDENTITY, f"conversion identity G(N−1) − G(N+1) = 2·N·F(N): {worst:.1e} off at most")
+
+
+def check_circuits(jobs: Sequence[Job], filters: Sequence[Built | None], needing: Sequence[Array]) -> Check:
+    """Compare the ladder recursion with a nodal solution, losses included, at the carrier and the decisive lines."""
+    worst = 0.0
+    for job, built, required_db in zip(jobs, filters, needing, strict=True):
+        if built is None:
+            continue
+        frequency_hz = _decisive(job, required_db)
+        kit = job.kit if job.design.unloaded_q is None else None
+        first = sweep(built.circuit, frequency_hz, kit=kit, unloaded_q=job.design.unloaded_q).attenuation_db
+        second = nodal_sweep(built.circuit, frequency_hz, kit=kit, unloaded_q=job.design.unloaded_q).attenuation_db
+        worst = max(worst, _difference(first, second))
+    return Check(worst < _CIRCUIT_DB, f"ladder recursion against nodal solution: {worst:.1e} dB off at most")
+
+
+def check_prototypes(jobs: Sequence[Job], filters: Sequence[Built | None], needing: Sequence[Array]) -> Check:
+    """Compare the lossless ladders with the prototypes' closed form at the decisive lines."""
+    worst = 0.0
+    for job, built, required_db in zip(jobs, filters, needing, strict=True):
+        if built is None:
+            continue
+        frequency_hz = _decisive(job, required_db)
+        closed = prototype_attenuation(built.prototype, centre_hz=built.centre_hz, bandwidth=built.bandwidth)
+        worst = max(worst, _difference(sweep(built.circuit, frequency_hz).attenuation_db, closed(frequency_hz)))
+    return Check(worst < _PROTOTYPE_DB, f"lossless ladders against the prototypes: {worst:.1e} dB off at most")
+
+
+def check_requirement(chain: ChainArrays, required_db: Sequence[Array], out_of_reach: Array) -> Check:
+    """Run the chain with exactly the required rejections: every limit within reach must hold, margin included."""
+    over = float(np.max(np.where(out_of_reach, 0.0, worst_excess(chain, required_db)), initial=0.0))
+    over_db = float(chain.to_db(over)) if over > 0 else -np.inf
+    return Check(over_db <= _SUM_DB, f"forward run with exactly the required rejections: {over_db:+.3f} dB over")
+
+
+def _decisive(job: Job, required_db: Array) -> Array:
+    """Return the carrier's edges and the lines that need rejection [Hz]."""
+    needing = required_db > 0
+    return np.concatenate([job.carrier_hz, job.low_hz[needing], job.high_hz[needing]])
+
+
+def _difference(first_db: Array, second_db: Array) -> float:
+    """Return the largest difference, down to where double precision still carries it."""
+    seen = np.minimum(first_db, second_db) < _DEEPEST_DB
+    return float(np.max(np.abs(first_db - second_db)[seen], initial=0.0))

@@ -1,0 +1,211 @@
+"""Everything that was found, as the frozen plan that people and files read."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from harmonic_planner.chain.assemble import Array, ChainArrays
+from harmonic_planner.chain.levels import CarrierLevels
+from harmonic_planner.filters.response import sweep
+from harmonic_planner.model import (
+    FilterPlan,
+    LineLevel,
+    OutputPlan,
+    PhaseNoisePoint,
+    Plan,
+    Requirement,
+    Scenario,
+    StagePlan,
+)
+from harmonic_planner.physics.noise import phase_noise
+from harmonic_planner.planning.evaluate import FAINTEST_DBC, Run, output_lines, worst_db
+from harmonic_planner.planning.jobs import Job
+from harmonic_planner.planning.notes import assumptions_for, cautions_for, warnings_for
+from harmonic_planner.planning.proposals import Advice
+from harmonic_planner.planning.selfcheck import Check
+from harmonic_planner.planning.settle import Settled
+from harmonic_planner.planning.stage_filter import StageFilter
+from harmonic_planner.planning.verdict import limits_met, sentence
+
+SCHEMA = "harmonic-planner/plan/1"
+_RESPONSE_POINTS = 241
+_EDGE_POINTS = 41
+
+
+@dataclass(frozen=True)
+class Findings:
+    """What the steps of the plan found.
+
+    Attributes
+    ----------
+    transmissions : sequence of (points, lines) float
+        Of every filter over span and drift.
+    run, other : Run
+        Under the plan's phase rule, and under the other one.
+    """
+
+    scenario: Scenario
+    chain: ChainArrays
+    jobs: Sequence[Job]
+    settled: Settled
+    transmissions: Sequence[Array]
+    run: Run
+    other: Run
+    levels: Sequence[CarrierLevels]
+    advice: Sequence[Advice]
+    checks: Sequence[Check]
+
+
+def summarise(f: Findings) -> Plan:
+    """Gather `f` into the plan."""
+    last = f.levels[-1].output_dbm
+    carrier = f.chain.stages[-1].carrier
+    output = OutputPlan(
+        carrier_dbm=(float(last.min()), float(last.max())),
+        frequency_hz=(float(f.chain.low_hz[carrier]), float(f.chain.high_hz[carrier])),
+        lines=output_lines(f.scenario, f.chain, f.transmissions, f.run, f.other.margin_db[-1]),
+        phase_noise=_phase_noise(f),
+    )
+    stages = tuple(_stage(f, i) for i in range(len(f.jobs)))
+    met = limits_met(f.scenario, f.run, f.settled)
+    buildable = all(e.verdict != "swamped" for s in stages if s.filter.source == "planned" for e in s.filter.elements)
+    buildable = buildable and all(x.built is not None for x in f.settled.filters if x.source == "planned")
+    checked = all(c.passed for c in f.checks)
+    return Plan(
+        schema=SCHEMA,
+        title=f.scenario.title,
+        verdict="met" if met and buildable and checked else "not met",
+        sentence=sentence(f.scenario, f.chain, f.run, f.settled, stages, met=met, buildable=buildable, checked=checked),
+        limits_met=met,
+        buildable=buildable,
+        self_check=checked,
+        self_checks=tuple(("passed: " if c.passed else "FAILED: ") + c.text for c in f.checks),
+        warnings=warnings_for(f.scenario, f.chain, f.jobs, f.levels, f.run.combs),
+        assumptions=assumptions_for(f.scenario, f.chain, f.jobs),
+        cautions=cautions_for(f.levels),
+        source_lines=_lines(f.chain, f.chain.source),
+        output=output,
+        stages=stages,
+    )
+
+
+def _stage(f: Findings, i: int) -> StagePlan:
+    stage, arrays, comb, level = f.scenario.stages[i], f.chain.stages[i], f.run.combs[i], f.levels[i]
+    return StagePlan(
+        name=stage.name,
+        times=stage.times,
+        line=f.chain.grid.line(arrays.carrier),
+        frequency_hz=f.jobs[i].carrier_hz,
+        drive_dbm=float(np.median(level.drive_dbm)),
+        output_dbm=float(np.median(level.output_dbm)),
+        input_lines=_lines(f.chain, comb.entering),
+        device_lines=_lines(f.chain, comb.device),
+        output_lines=_lines(f.chain, comb.leaving),
+        filter=_filter(f, i),
+    )
+
+
+def _lines(chain: ChainArrays, comb: Array) -> tuple[LineLevel, ...]:
+    """Return every line that is not too faint, the worst over the span."""
+    level_db = worst_db(chain, comb)
+    return tuple(
+        LineLevel(chain.grid.line(int(k)), float(level_db[k])) for k in np.flatnonzero(level_db > FAINTEST_DBC)
+    )
+
+
+def _filter(f: Findings, i: int) -> FilterPlan:
+    job, chosen, advice = f.jobs[i], f.settled.filters[i], f.advice[i]
+    if chosen.attenuation is None or chosen.prototype is None or chosen.centre_hz is None or chosen.bandwidth is None:
+        return FilterPlan(source=chosen.source, reason=chosen.reason)
+    highest = max(4 * chosen.centre_hz, 1.1 * _highest_needed(job, f.settled.needed.required_db[i]))
+    grid_hz = np.geomspace(chosen.centre_hz / 8, highest, _RESPONSE_POINTS)
+    response_hz = np.unique(np.concatenate([grid_hz, np.linspace(0.7, 1.4, _EDGE_POINTS) * chosen.centre_hz]))
+    return FilterPlan(
+        source=chosen.source,
+        family=chosen.prototype.family,
+        ripple_db=chosen.prototype.ripple_db if chosen.prototype.family == "chebyshev" else None,
+        order=chosen.prototype.order,
+        topology=None if chosen.built is None else chosen.built.topology,
+        centre_hz=chosen.centre_hz,
+        bandwidth_hz=chosen.bandwidth * chosen.centre_hz,
+        loss_db=float(chosen.attenuation(np.array([chosen.centre_hz]))[0]),
+        return_loss_db=_return_loss_db(job, chosen),
+        unloaded_q=job.unloaded_q,
+        reason=chosen.reason,
+        requirement=_requirement(f, i),
+        windows=chosen.choice.windows if chosen.choice is not None else (),
+        elements=chosen.built.elements if chosen.built is not None else (),
+        proposals=advice.proposals,
+        proposals_note=advice.note,
+        response_hz=tuple(float(x) for x in response_hz),
+        response_db=tuple(float(x) for x in chosen.attenuation(response_hz)),
+    )
+
+
+def _highest_needed(job: Job, required_db: Array) -> float:
+    needing = required_db > 0
+    return float(np.max(job.high_hz[needing], initial=0.0))
+
+
+def _requirement(f: Findings, i: int) -> tuple[Requirement, ...]:
+    """Return what is asked at every line that the device makes itself, and at every other that needs rejection."""
+    job, chosen, arrays = f.jobs[i], f.settled.filters[i], f.chain.stages[i]
+    required_db = f.settled.needed.required_db[i]
+    if chosen.ideal is None:
+        return ()
+    ideal_db = _ideal_db(job, chosen)
+    shown = np.flatnonzero((required_db > 0) | (arrays.own & (f.run.combs[i].device.max(axis=0) > 0)))
+    return tuple(
+        Requirement(
+            line=f.chain.grid.line(int(k)),
+            frequency_hz=(float(job.low_hz[k]), float(job.high_hz[k])),
+            required_db=float(required_db[k]),
+            ideal_db=float(ideal_db[k]),
+            as_built_db=float(chosen.action.rejection_db[k]),
+            margin_db=float(chosen.action.rejection_db[k] - required_db[k]),
+        )
+        for k in shown
+    )
+
+
+def _ideal_db(job: Job, chosen: StageFilter) -> Array:
+    """Return the rejection of the lossless prototype, without leakage."""
+    from harmonic_planner.planning.jobs import act
+
+    assert chosen.ideal is not None
+    return act(job, chosen.ideal).skirt_db
+
+
+def _return_loss_db(job: Job, chosen: StageFilter) -> float | None:
+    """Return the least return loss over the carrier's span and drift, of the circuit."""
+    if chosen.built is None:
+        return None
+    low, high = job.carrier_hz[0] / (1 + job.design.drift), job.carrier_hz[1] / (1 - job.design.drift)
+    frequency_hz = np.linspace(low, high, _EDGE_POINTS)
+    q = job.design.unloaded_q
+    response = sweep(chosen.built.circuit, frequency_hz, kit=job.kit if q is None else None, unloaded_q=q)
+    return float(response.return_loss_db.min())
+
+
+def _phase_noise(f: Findings) -> tuple[PhaseNoisePoint, ...]:
+    """Return the phase noise at the output, with the floor of every amplifier that has a noise figure."""
+    noise = f.scenario.source.phase_noise
+    if not noise:
+        return ()
+    total = f.scenario.total
+    counted = [
+        (s.amplifier.noise_figure_db, float(np.min(level.amplifier_input_dbm)), total / float(f.scenario.carrier(i)))
+        for i, (s, level) in enumerate(zip(f.scenario.stages, f.levels, strict=True))
+        if s.amplifier is not None and s.amplifier.noise_figure_db is not None
+    ]
+    at_output = phase_noise(
+        [level for _, level in noise],
+        factor=total,
+        noise_figure_db=[c[0] for c in counted],
+        input_dbm=[c[1] for c in counted],
+        factor_after=[c[2] for c in counted],
+    )
+    return tuple(PhaseNoisePoint(offset, float(x)) for (offset, _), x in zip(noise, at_output, strict=True))

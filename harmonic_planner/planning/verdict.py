@@ -1,0 +1,94 @@
+"""Whether a plan holds, and the one sentence that says so."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+import numpy as np
+
+from harmonic_planner.chain.assemble import ChainArrays
+from harmonic_planner.model import Scenario, StagePlan
+from harmonic_planner.planning.evaluate import Run
+from harmonic_planner.planning.settle import Settled
+
+_ROUNDING_DB = 1e-9
+
+
+def limits_met(scenario: Scenario, run: Run, settled: Settled) -> bool:
+    """Tell whether every limit holds with its margin and every planned filter gives what it is held to."""
+    asked = np.array([s.design.margin_db for s in scenario.stages])[:, None]
+    return bool((run.margin_db >= asked - _ROUNDING_DB).all()) and all(f.meets for f in settled.filters)
+
+
+def sentence(
+    scenario: Scenario,
+    chain: ChainArrays,
+    run: Run,
+    settled: Settled,
+    stages: Sequence[StagePlan],
+    *,
+    met: bool,
+    buildable: bool,
+    checked: bool,
+) -> str:
+    """Say in one sentence whether the plan can be used, and if not, why and what would help."""
+    over = run.margin_db - np.array([s.design.margin_db for s in scenario.stages])[:, None]
+    to, k = np.unravel_index(int(np.argmin(over)), over.shape)
+    where = "at the output" if to == len(chain.stages) - 1 else f"behind {scenario.stages[to].name}"
+    line = chain.grid.line(int(k))
+    resonators = sum(s.filter.order or 0 for s in stages if s.filter.source == "planned")
+    count = sum(s.filter.source == "planned" for s in stages)
+    if met:
+        limits = (
+            f"every line is within its limit; the closest, line {line} {where}, has {run.margin_db[to, k]:.1f} dB of margin"
+            f" with {resonators} resonators in {count} filters"
+        )
+    else:
+        limits = f"line {line} {where} has a margin of {run.margin_db[to, k]:.1f} dB" + _shortfall(
+            scenario, chain, settled, int(to), int(k)
+        )
+    if not checked:
+        return f"Not met: a self-check failed; {limits}."
+    if met and buildable:
+        return f"Met: {limits}, and every part can be built."
+    problems = [] if met else [limits]
+    if not buildable:
+        problems.append(_unbuildable(stages))
+        if met:
+            problems.append(limits)
+    return f"Not met: {'; '.join(problems)}."
+
+
+def _shortfall(scenario: Scenario, chain: ChainArrays, settled: Settled, to: int, k: int) -> str:
+    """Say what keeps the limit from being met."""
+    unfit = [(s.name, f.reason) for s, f in zip(scenario.stages, settled.filters, strict=True) if not f.meets]
+    if unfit:
+        return f"; {unfit[0][0]} has no filter that does what is needed: {unfit[0][1]}"
+    if settled.needed.out_of_reach[to, k]:
+        amplifier = scenario.stages[to].amplifier
+        if amplifier is not None and chain.stages[to].amplifier[k] > 0:
+            return (
+                f", and the amplifier of {scenario.stages[to].name} makes it behind the last filter: "
+                "a clean-up stage (times = 1) with a filter would take it out"
+            )
+        return ", and no filter here can take it out: it is too close to the carrier or leaks past"
+    return ""
+
+
+def _unbuildable(stages: Sequence[StagePlan]) -> str:
+    """Name the stages whose parts strays would swamp, and what would help."""
+    words = []
+    for s in stages:
+        swamped = [e for e in s.filter.elements if e.verdict == "swamped"]
+        if s.filter.source != "planned":
+            continue
+        if s.filter.order is None:
+            words.append(f"{s.name} has no filter")
+        elif swamped:
+            helpful = next((p for p in s.filter.proposals if p.buildable), None)
+            remedy = f"would help: {helpful.change}" if helpful is not None else "no ladder helps"
+            words.append(
+                f"{s.name} cannot be built ({swamped[0].ref}: {swamped[0].reason}; {len(swamped)} of "
+                f"{len(s.filter.elements)} parts swamped; {remedy})"
+            )
+    return ", ".join(words)

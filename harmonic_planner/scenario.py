@@ -1,0 +1,370 @@
+"""From a TOML file to a `Scenario`: every problem of the file at once, every default that shaped it listed."""
+
+from __future__ import annotations
+
+import math
+import tomllib
+from collections.abc import Iterator, Mapping
+from pathlib import Path
+from typing import Any
+
+from pydantic import ValidationError
+
+from harmonic_planner.model import (
+    Amplifier,
+    Design,
+    Device,
+    GivenFilter,
+    Isolation,
+    MaskBand,
+    Output,
+    PlannerError,
+    Scenario,
+    Source,
+    Stage,
+)
+from harmonic_planner.scenario_checks import SHAPE_KEYS, design_value, joint_problems, parts_of, stage_name
+from harmonic_planner.scenario_problems import Problem, key_problems
+from harmonic_planner.scenario_tables import (
+    AmplifierTable,
+    DesignTable,
+    DeviceTable,
+    Document,
+    FilterTable,
+    SourceTable,
+    StageTable,
+)
+from harmonic_planner.template import TEMPLATE
+
+__all__ = ["TEMPLATE", "ScenarioError", "json_schema", "load", "loads"]
+
+LARGEST_FILE = 1_000_000
+"""Bytes of the longest scenario file that is read."""
+
+HALF_ANGLES_DEG: Mapping[int, float] = {2: 70.0, 3: 50.0}
+"""Conduction half-angle by factor where none is given (memory); 120/N deg for the others."""
+
+
+class ScenarioError(PlannerError):
+    """A scenario file that cannot be used, with every problem in it.
+
+    Parameters
+    ----------
+    path : pathlib.Path
+        The file.
+    problems : tuple of str
+        One line each, without the file's name.
+    """
+
+    def __init__(self, path: Path, problems: tuple[str, ...]) -> None:
+        super().__init__("\n".join(f"{path}: {problem}" for problem in problems))
+        self.path = path
+        self.problems = problems
+
+
+# -------------------------------------------------------------------------------------------------------- reading
+
+
+def load(path: Path) -> Scenario:
+    """Read a scenario file.
+
+    Parameters
+    ----------
+    path : pathlib.Path
+        A TOML file in UTF-8.
+
+    Returns
+    -------
+    Scenario
+        In SI, with the defaults that were filled in.
+
+    Raises
+    ------
+    ScenarioError
+        With every problem found, one line each.
+    """
+    try:
+        if path.is_dir():
+            raise ScenarioError(path, ("is a folder; name a scenario file in TOML",))
+        with path.open("rb") as file:
+            data = file.read(LARGEST_FILE + 1)
+    except FileNotFoundError:
+        raise ScenarioError(path, ("there is no such file",)) from None
+    except (OSError, ValueError) as error:
+        reason = error.strerror if isinstance(error, OSError) and error.strerror else str(error)
+        raise ScenarioError(path, (f"cannot be read: {reason}",)) from None
+    if len(data) > LARGEST_FILE:
+        raise ScenarioError(path, (f"is longer than {LARGEST_FILE} bytes, which no scenario is",))
+    try:
+        text = data.decode("utf-8-sig")
+    except UnicodeDecodeError as error:
+        line = data.count(b"\n", 0, error.start) + 1
+        problem = f"is not UTF-8 text: byte 0x{data[error.start]:02x} in line {line}; save it as UTF-8"
+        raise ScenarioError(path, (problem,)) from None
+    return loads(text, path=path)
+
+
+def loads(text: str, *, path: Path) -> Scenario:
+    """Read a scenario from text.
+
+    Parameters
+    ----------
+    text : str
+        TOML.
+    path : pathlib.Path
+        Names the text in errors; its folder is where a kit file is looked up.
+
+    Returns
+    -------
+    Scenario
+
+    Raises
+    ------
+    ScenarioError
+        With every problem found, one line each.
+    """
+    if not text.strip():
+        raise ScenarioError(path, ("is empty; `harmonic-planner new FILE` writes a scenario to start from",))
+    try:
+        raw = tomllib.loads(text)
+    except tomllib.TOMLDecodeError as error:
+        raise ScenarioError(path, (f"is not valid TOML: {error}",)) from None
+    except ValueError:  # an integer with thousands of digits
+        raise ScenarioError(path, ("is not valid TOML: a number with too many digits",)) from None
+    except RecursionError:
+        raise ScenarioError(path, ("is not valid TOML: nested too deeply",)) from None
+    problems: list[Problem] = []
+    document: Document | None = None
+    try:
+        document = Document.model_validate(raw)
+    except ValidationError as error:
+        problems.extend(key_problems(error))
+    problems.extend(joint_problems(raw, parts_of(raw), folder=path.parent))
+    if problems or document is None:
+        raise ScenarioError(path, tuple(problem.line(raw) for problem in problems))
+    return _scenario(document, path)
+
+
+def json_schema() -> dict[str, Any]:
+    """Return the JSON Schema of a scenario file.
+
+    Returns
+    -------
+    dict
+        Draft 2020-12; every key with its description, its default as a user would write it, and for quantities the
+        pattern of number and unit.
+    """
+    schema = _plain(Document.model_json_schema(by_alias=True))
+    return {"$schema": "https://json-schema.org/draft/2020-12/schema", **schema, "title": "harmonic-planner scenario"}
+
+
+def _plain(node: Any) -> Any:
+    """Drop what TOML has no use for: the null of a key left out, titles made from field names."""
+    if isinstance(node, list):
+        return [_plain(item) for item in node]
+    if not isinstance(node, dict):
+        return node
+    node = {key: _plain(value) for key, value in node.items() if key != "title" or not isinstance(value, str)}
+    branches = [item for item in node.get("anyOf", ()) if item != {"type": "null"}]
+    if len(branches) == 1:
+        return {**branches[0], **{key: value for key, value in node.items() if key != "anyOf"}}
+    return node
+
+
+# ----------------------------------------------------------------------------------------------------- conversion
+
+
+def _scenario(document: Document, path: Path) -> Scenario:
+    source, output = document.source, document.output
+    return Scenario(
+        title=document.title if document.title is not None else path.stem,
+        source=Source(
+            frequency_hz=source.frequency,
+            level_dbm=source.level,
+            lines_dbc=dict(source.lines or {}),
+            phase_noise=tuple(sorted((source.phase_noise or {}).items())),
+        ),
+        output=Output(
+            limit_dbc=output.limit,
+            level_dbm=output.level,
+            mask=tuple(MaskBand(band.from_, band.to, band.limit) for band in output.mask or ()),
+        ),
+        design=_design(document.design),
+        stages=tuple(_stage(i, stage, document.design) for i, stage in enumerate(document.stage)),
+        defaults=tuple(_defaults(document)),
+        folder=path.parent,
+    )
+
+
+def _design(table: DesignTable, stage: StageTable | None = None) -> Design:
+    """Convert [design], or what of it holds in a stage."""
+    values = {name: getattr(table, name) for name in DesignTable.model_fields}
+    if stage is not None:
+        values |= {name: design_value(name, table, stage) for name in DesignTable.model_fields}
+    isolation = values["isolation"]
+    return Design(
+        impedance_ohm=values["impedance"],
+        kit=values["kit"],
+        families=values["families"],
+        ripple_db=values["ripple"],
+        max_order=values["max_order"],
+        flatness_db=values["flatness"],
+        loss_db=values["loss"],
+        drift=values["drift"],
+        margin_db=values["margin"],
+        phases=values["phases"],
+        isolation=Design().isolation if isolation is None else Isolation(isolation, flat=True),
+        reflection=values["reflection"],
+        termination_db=values["termination"],
+        unloaded_q=values["unloaded_q"],
+        min_bandwidth=values["min_bandwidth"],
+        topology=values["topology"],
+        tuned=values["tuned"],
+    )
+
+
+def _stage(i: int, table: StageTable, design: DesignTable) -> Stage:
+    merged = _design(design, table)
+    return Stage(
+        name=stage_name(i, table),
+        times=table.times,
+        device=_device(table.device, table.times) if table.device is not None else None,
+        pad_db=table.pad or 0.0,
+        pad_after_db=table.pad_after or 0.0,
+        filter=_given(table.filter, merged) if isinstance(table.filter, FilterTable) else table.filter,  # type: ignore[arg-type]
+        amplifier=_amplifier(table.amplifier) if table.amplifier is not None else None,
+        limit_dbc=table.limit,
+        design=merged,
+    )
+
+
+def _half_angle_deg(times: int) -> float:
+    return HALF_ANGLES_DEG.get(times, 120.0 / times)
+
+
+def _device(table: DeviceTable, times: int) -> Device:
+    half_angle_rad = table.half_angle if table.half_angle is not None else math.radians(_half_angle_deg(times))
+    return Device(
+        type=table.type,
+        conversion_db=table.conversion if table.conversion is not None else 0.0,
+        half_angle_rad=half_angle_rad,
+        balance_db=table.balance,
+        steepness=table.steepness,
+        device_class=table.class_,
+        drive_dbm=table.drive,
+        lines_dbc=dict(table.lines or {}),
+        reflection=table.reflection,
+    )
+
+
+def _amplifier(table: AmplifierTable) -> Amplifier:
+    return Amplifier(
+        gain_db=table.gain,
+        saturation_dbm=table.saturation,
+        noise_figure_db=table.noise_figure,
+        lines_dbc=dict(table.lines or {}),
+        reflection=table.reflection,
+    )
+
+
+def _given(table: FilterTable, design: Design) -> GivenFilter:
+    return GivenFilter(
+        family=table.family,
+        order=table.order,
+        centre_hz=table.centre,
+        bandwidth_hz=table.bandwidth.hz(table.centre),
+        ripple_db=table.ripple if table.ripple is not None else design.ripple_db,
+        topology=table.topology,
+        unloaded_q=table.unloaded_q,
+    )
+
+
+# ------------------------------------------------------------------------------------------------------- defaults
+
+_DESIGN_WORDS: Mapping[str, str] = {
+    "families": " = butterworth and chebyshev",
+    "isolation": " = 75 dB to 1 GHz, 20 dB a decade less above",
+    "reflection": ": the neighbour's own",
+    "termination": ": by pad, 3 dB without one, 1.5 dB with 3 dB, 1 dB with 6 dB",
+    "unloaded_q": ": from kit and topology",
+    "tuned": " = false",
+}
+"""Design keys whose default is not one text to write."""
+
+
+def _written(table: type[DesignTable | DeviceTable | AmplifierTable | SourceTable], name: str) -> str:
+    return f" = {table.model_fields[name].default}"
+
+
+def _defaults(document: Document) -> Iterator[str]:
+    """List every default that shaped the scenario, in the order of the file."""
+    source = document.source.model_fields_set
+    if "level" not in source:
+        yield "source.level" + _written(SourceTable, "level")
+    if "lines" not in source:
+        yield "source.lines: none given; a real source has harmonics"
+    if "phase_noise" not in source:
+        yield "source.phase_noise: none given, none reported"
+    if document.output.level is None:
+        yield "output.level: none asked for"
+    for name in DesignTable.model_fields:
+        everywhere = all(name in stage.model_fields_set for stage in document.stage)
+        if name not in document.design.model_fields_set and not everywhere:
+            yield f"design.{name}" + _DESIGN_WORDS.get(name, _written(DesignTable, name))
+    for i, stage in enumerate(document.stage):
+        place = f"stage[{i + 1}]"
+        yield from _stage_defaults(place, stage, document.design)
+
+
+def _stage_defaults(place: str, stage: StageTable, design: DesignTable) -> Iterator[str]:
+    if stage.device is not None:
+        own_reflection = design_value("reflection", design, stage) is None
+        yield from _device_defaults(f"{place}.device", stage.device, stage.times, own_reflection=own_reflection)
+    for name in ("pad", "pad_after", "limit", "amplifier"):
+        if name not in stage.model_fields_set:
+            yield f"{place}.{name}: none"
+    if "filter" not in stage.model_fields_set:
+        yield f"{place}.filter = plan"
+    if isinstance(stage.filter, FilterTable):
+        given = stage.filter
+        if given.ripple is None and given.family == "chebyshev":
+            yield f"{place}.filter.ripple = {design_value('ripple', design, stage):g} dB"
+        if given.topology is None:
+            yield f"{place}.filter.topology: none, the prototype's own response"
+        if given.unloaded_q is None and given.topology is None:
+            yield f"{place}.filter.unloaded_q: lossless"
+    if stage.amplifier is not None:
+        own_reflection = design_value("reflection", design, stage) is None
+        yield from _amplifier_defaults(f"{place}.amplifier", stage.amplifier, own_reflection=own_reflection)
+
+
+def _device_defaults(place: str, device: DeviceTable, times: int, *, own_reflection: bool) -> Iterator[str]:
+    absent = DeviceTable.model_fields.keys() - device.model_fields_set
+    words = {
+        "half_angle": f" = {_half_angle_deg(times):.4g} deg",
+        "balance": _written(DeviceTable, "balance"),
+        "steepness": _written(DeviceTable, "steepness"),
+    }
+    if "conversion" in absent:
+        yield f"{place}.conversion = 0 dB"
+    for name, types in SHAPE_KEYS.items():
+        if name in absent and device.type in types:
+            yield f"{place}.{name}{words[name]}"
+    if "class_" in absent:
+        yield f"{place}.class" + _written(DeviceTable, "class_")
+    if "drive" in absent:
+        yield f"{place}.drive: no window, none checked; the planned level is nominal"
+    if "lines" in absent:
+        yield f"{place}.lines: those of the waveform"
+    if "reflection" in absent and own_reflection:
+        yield f"{place}.reflection" + _written(DeviceTable, "reflection")
+
+
+def _amplifier_defaults(place: str, amplifier: AmplifierTable, *, own_reflection: bool) -> Iterator[str]:
+    absent = AmplifierTable.model_fields.keys() - amplifier.model_fields_set
+    words = {"saturation": "none, linear", "noise_figure": "not counted", "lines": "none given"}
+    for name, text in words.items():
+        if name in absent:
+            yield f"{place}.{name}: {text}"
+    if "reflection" in absent and own_reflection:
+        yield f"{place}.reflection" + _written(AmplifierTable, "reflection")

@@ -1,0 +1,211 @@
+"""What the keys of a scenario may hold together: limits, devices, factors, names."""
+
+from __future__ import annotations
+
+import math
+from collections import Counter
+from collections.abc import Iterator, Mapping
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Any, TypeVar
+
+from pydantic import ValidationError
+
+from harmonic_planner.model import DeviceType
+from harmonic_planner.parts.kit_files import KitError
+from harmonic_planner.parts.kits import kit_names, load_kit
+from harmonic_planner.rules import nearest
+from harmonic_planner.scenario_problems import SHAPES, Location, Problem
+from harmonic_planner.scenario_tables import (
+    LIMIT,
+    DesignTable,
+    FilterTable,
+    OutputTable,
+    SourceTable,
+    StageTable,
+    Table,
+)
+
+MOST_STAGES = 12
+LARGEST_TOTAL = 4096
+"""Largest product of all factors and the common denominator of the source's lines."""
+
+T = TypeVar("T", bound=Table)
+
+
+@dataclass(frozen=True)
+class Parts:
+    """The tables of a document that could be read; None for those that could not."""
+
+    source: SourceTable | None
+    output: OutputTable | None
+    design: DesignTable | None
+    stages: tuple[StageTable | None, ...]
+
+
+def parts_of(raw: Mapping[str, Any]) -> Parts:
+    """Read each table on its own, so that one with problems does not hide what others do together.
+
+    Parameters
+    ----------
+    raw : mapping
+        The document.
+
+    Returns
+    -------
+    Parts
+    """
+    stages = raw.get("stage")
+    return Parts(
+        source=_read(SourceTable, raw.get("source")),
+        output=_read(OutputTable, raw.get("output")),
+        design=_read(DesignTable, raw.get("design", {})),
+        stages=tuple(_read(StageTable, item) for item in stages) if isinstance(stages, list) else (),
+    )
+
+
+def _read(table: type[T], raw: object) -> T | None:
+    try:
+        return table.model_validate(raw)
+    except ValidationError:
+        return None
+
+
+def design_value(name: str, design: DesignTable, stage: StageTable) -> Any:
+    """Return a design key as it holds in a stage: the stage's own, else that of [design]."""
+    return getattr(stage if name in stage.model_fields_set else design, name)
+
+
+def joint_problems(raw: Mapping[str, Any], parts: Parts, *, folder: Path) -> Iterator[Problem]:
+    """Find what is wrong between keys.
+
+    Parameters
+    ----------
+    raw : mapping
+        The document.
+    parts : Parts
+        Its tables, as far as they could be read.
+    folder : pathlib.Path
+        Where a kit file is looked up.
+
+    Yields
+    ------
+    Problem
+    """
+    yield from _source_problems(raw, parts.source)
+    yield from _output_problems(parts.output)
+    for i, stage in enumerate(parts.stages):
+        if stage is not None:
+            yield from _device_problems(i, stage)
+            yield from _filter_problems(i, stage)
+            if parts.design is not None:
+                yield from _flatness_problems(i, stage, parts.design)
+    yield from _kit_problems(parts, folder)
+    yield from _chain_problems(raw, parts)
+    yield from _name_problems(parts)
+
+
+def _source_problems(raw: Mapping[str, Any], source: SourceTable | None) -> Iterator[Problem]:
+    noise = source.phase_noise if source is not None else None
+    if noise is not None and len(noise) != len(raw["source"]["phase_noise"]):
+        yield Problem(("source", "phase_noise"), "must name each offset once")
+
+
+def _output_problems(output: OutputTable | None) -> Iterator[Problem]:
+    if output is None:
+        return
+    if output.limit is None and not output.mask:
+        yield Problem(("output", "limit"), f"missing; must be {LIMIT.allowed}, unless a mask is given", False)
+    for i, band in enumerate(output.mask or ()):
+        if band.from_ >= band.to:
+            yield Problem(("output", "mask", i, "to"), "must be above the range's lower end, from")
+
+
+SHAPE_KEYS: Mapping[str, tuple[DeviceType, ...]] = {
+    "half_angle": ("single-ended", "push-push", "push-pull"),
+    "balance": ("push-push", "push-pull"),
+    "steepness": ("limiter",),
+}
+
+
+def _device_problems(i: int, stage: StageTable) -> Iterator[Problem]:
+    place: Location = ("stage", i, "device")
+    device = stage.device
+    if device is None:
+        if stage.times > 1:
+            yield Problem(place, f"missing; must be {SHAPES['device']}, unless times is 1", False)
+        return
+    if stage.times == 1:
+        yield Problem(place, "must be left out where times is 1: a clean-up stage has no multiplier")
+    if device.conversion is None and device.type != "power-law":
+        yield Problem((*place, "conversion"), 'missing; must be a gain such as "-9 dB", except for power-law', False)
+    for key, types in SHAPE_KEYS.items():
+        if key in device.model_fields_set and device.type not in types:
+            owners = " and ".join((", ".join(types[:-1]), types[-1])) if len(types) > 1 else types[0]
+            yield Problem((*place, key), f"must be left out for {device.type}: it shapes {owners} only")
+    if stage.times in (device.lines or {}):
+        wanted = (*place, "lines", str(stage.times))
+        yield Problem(wanted, "must be left out: it is the wanted line, to which the others are relative")
+
+
+def _filter_problems(i: int, stage: StageTable) -> Iterator[Problem]:
+    given = stage.filter
+    if not isinstance(given, FilterTable):
+        return
+    if given.bandwidth.hz(given.centre) > given.centre:
+        yield Problem(("stage", i, "filter", "bandwidth"), "must be at most the centre frequency")
+    if given.family == "butterworth" and given.ripple is not None:
+        yield Problem(("stage", i, "filter", "ripple"), "must be left out for butterworth: it has no ripple")
+
+
+def _flatness_problems(i: int, stage: StageTable, design: DesignTable) -> Iterator[Problem]:
+    if stage.filter != "plan" or "chebyshev" not in design_value("families", design, stage):
+        return
+    flatness, ripple = (design_value(key, design, stage) for key in ("flatness", "ripple"))
+    if flatness < ripple:
+        owner: Location = ("stage", i) if stage.model_fields_set & {"flatness", "ripple", "families"} else ("design",)
+        key = "flatness" if "flatness" in (stage if owner[0] == "stage" else design).model_fields_set else "ripple"
+        other = f"the ripple, {ripple:g} dB" if key == "flatness" else f"the flatness, {flatness:g} dB"
+        yield Problem((*owner, key), f"must be at {'least' if key == 'flatness' else 'most'} {other}")
+
+
+def _kit_problems(parts: Parts, folder: Path) -> Iterator[Problem]:
+    places: list[tuple[Location, DesignTable | None]] = [(("design",), parts.design)]
+    places += [(("stage", i), stage) for i, stage in enumerate(parts.stages)]
+    shipped = kit_names()
+    for place, table in places:
+        if table is None or "kit" not in table.model_fields_set or table.kit in shipped:
+            continue
+        try:
+            load_kit(table.kit, folder)
+        except KitError as error:
+            for text in error.problems if (folder / table.kit).exists() else ("not found",):
+                near = nearest(table.kit, shipped) if text == "not found" else None
+                hint = f'; did you mean "{near}"?' if near else f"; {text}"
+                allowed = ", ".join(f'"{name}"' for name in shipped)
+                yield Problem((*place, "kit"), f"must be {allowed} or the path of a kit file{hint}")
+
+
+def _chain_problems(raw: Mapping[str, Any], parts: Parts) -> Iterator[Problem]:
+    count = len(parts.stages)
+    if isinstance(raw.get("stage"), list) and not 1 <= count <= MOST_STAGES:
+        yield Problem(("stage",), f"must be 1 to {MOST_STAGES} tables [[stage]]; there are {count}", shown=False)
+    total = math.prod(stage.times for stage in parts.stages if stage is not None)
+    lines = parts.source.lines if parts.source is not None else None
+    common = math.lcm(*(line.denominator for line in lines or ()))
+    if total * common > LARGEST_TOTAL:
+        halves = f"{LARGEST_TOTAL // common} with source lines in 1/{common}" if common > 1 else f"{LARGEST_TOTAL}"
+        yield Problem(("stage",), f"the factors multiply to {total}, must be at most {halves}", shown=False)
+
+
+def _name_problems(parts: Parts) -> Iterator[Problem]:
+    names = [stage_name(i, stage) for i, stage in enumerate(parts.stages) if stage is not None]
+    twice = {name for name, count in Counter(names).items() if count > 1}
+    for i, stage in enumerate(parts.stages):
+        if stage is not None and stage.name is not None and stage.name in twice:
+            yield Problem(("stage", i, "name"), "must be a name that no other stage has")
+
+
+def stage_name(i: int, stage: StageTable) -> str:
+    """Return a stage's name, "stage 1" and so on where it has none; `i` counts from 0."""
+    return stage.name if stage.name is not None else f"stage {i + 1}"

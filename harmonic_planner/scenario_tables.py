@@ -1,0 +1,333 @@
+"""The tables of a scenario file, one pydantic model each: which keys there are, what each allows, its default.
+
+A default stands here as a user would write it, so that the published schema and the list of defaults in a plan show
+the same text. A key that may be left out without a value to write for it has None.
+"""
+
+from __future__ import annotations
+
+import re
+from dataclasses import dataclass
+from fractions import Fraction
+from typing import Annotated, Any, get_args
+
+from pydantic import BaseModel, ConfigDict, Discriminator, Field, Tag
+
+from harmonic_planner.filters import topologies
+from harmonic_planner.model import DeviceClass, DeviceType, Family, Phases
+from harmonic_planner.quantities import (
+    ANGLE,
+    FREQUENCY,
+    LEVEL_DBM,
+    LINE_DBC,
+    NOISE_DBC_HZ,
+    OFFSET,
+    PERCENT,
+    RATIO_DB,
+    RESISTANCE,
+    Either,
+    Pair,
+    Width,
+    WidthRule,
+)
+from harmonic_planner.rules import Choice, Flag, Number, Rule, Several, Text, nearest
+
+LAST_LINE = 100
+LARGEST_FACTOR = 12
+LARGEST_DENOMINATOR = 12
+
+
+# ------------------------------------------------------------------------------------------- rules of these tables
+
+
+@dataclass(frozen=True)
+class LineKey(Rule):
+    """A key of `lines`: a harmonic number, not the wanted line itself."""
+
+    fractions: bool
+    first: int
+
+    @property
+    def allowed(self) -> str:
+        """Words that follow "must be"."""
+        if self.fractions:
+            return f'a line such as "2" or "1/2" in lowest terms, up to {LAST_LINE}, and not "1", the carrier'
+        return f"a harmonic number, a whole number from {self.first} to {LAST_LINE}"
+
+    def parse(self, value: object) -> Fraction | int:
+        """Read a line's name."""
+        if not isinstance(value, str) or re.fullmatch(r"[1-9][0-9]{0,2}(/[1-9][0-9]?)?", value) is None:
+            raise self.refuse()
+        line = Fraction(value)
+        if str(line) != value or line > LAST_LINE or line.denominator > LARGEST_DENOMINATOR:
+            raise self.refuse()
+        if line == 1 if self.fractions else line.denominator > 1 or line < self.first:
+            raise self.refuse()
+        return line if self.fractions else int(line)
+
+    def schema(self) -> dict[str, Any]:
+        """Return the JSON Schema of it."""
+        return {"type": "string", "pattern": "^[1-9][0-9]*(/[1-9][0-9]*)?$" if self.fractions else "^[1-9][0-9]*$"}
+
+
+@dataclass(frozen=True)
+class TopologyRule(Rule):
+    """A circuit's name; with `several` also "auto", the name of a group of circuits, or a list of names."""
+
+    several: bool
+
+    @property
+    def words(self) -> tuple[str, ...]:
+        """Names that may stand here or in a list."""
+        groups = tuple(name for name in topologies.ALIASES if name != "auto") if self.several else ()
+        return (*topologies.REGISTRY, *groups)
+
+    @property
+    def allowed(self) -> str:
+        """Words that follow "must be"."""
+        if self.several:
+            return '"auto", ' + ", ".join(f'"{w}"' for w in self.words) + ", or a list of these names"
+        return Choice(self.words).allowed
+
+    def parse(self, value: object) -> Any:
+        """Read a name, or a list of names."""
+        names = value if self.several and isinstance(value, list) else [value]
+        if self.several and value == "auto":
+            return ("auto",)
+        for name in names:
+            if name not in self.words:
+                near = nearest(name, self.words) if isinstance(name, str) else None
+                raise self.refuse(f'did you mean "{near}"?' if near else "")
+        if not names or len(set(names)) != len(names):
+            raise self.refuse("each once")
+        return tuple(names) if self.several else value
+
+    def schema(self) -> dict[str, Any]:
+        """Return the JSON Schema of it."""
+        one = Choice(self.words).schema()
+        if not self.several:
+            return one
+        return {"anyOf": [{"const": "auto"}, one, {"type": "array", "items": one, "minItems": 1, "uniqueItems": True}]}
+
+
+@dataclass(frozen=True)
+class FilterWord(Choice):
+    """The words that stand in place of a given filter's table."""
+
+    words: tuple[str, ...] = ("plan", "none")
+
+    @property
+    def allowed(self) -> str:
+        """Words that follow "must be"."""
+        return '"plan", "none" or a table { family, order, centre, bandwidth }'
+
+
+RIPPLE = RATIO_DB.between(0.01, 0.5, example="0.1 dB")
+REFLECTION = Number(0, 1, below=True)
+QUALITY = Number(1, 1e6)
+ORDER = Number(1, 9, whole=True)
+LIMIT = LINE_DBC.between(-250, 0, below=True, example="-60 dBc")
+SOURCE_LINE = LineKey(fractions=True, first=1)
+DEVICE_LINE = LineKey(fractions=False, first=1)
+AMPLIFIER_LINE = LineKey(fractions=False, first=2)
+
+
+# ------------------------------------------------------------------------------------------------- kinds of keys
+
+
+def _need(description: str) -> Any:
+    """Declare a key that must be there."""
+    return Field(description=description)
+
+
+def _default(value: object, description: str) -> Any:
+    """Declare a key with the default a user could have written."""
+    return Field(default=value, validate_default=True, description=description)
+
+
+def _without_default(schema: dict[str, Any]) -> None:
+    schema.pop("default", None)
+
+
+def _maybe(description: str) -> Any:
+    """Declare a key that may be left out without a value to write for it."""
+    return Field(default=None, description=description, json_schema_extra=_without_default)
+
+
+class Table(BaseModel):
+    """What all tables share: unknown keys are errors."""
+
+    model_config = ConfigDict(extra="forbid", frozen=True)
+
+
+# --------------------------------------------------------------------------------------------------------- tables
+
+
+class SourceTable(Table):
+    """The reference: its frequency or tuning span, level, and the lines it brings along."""
+
+    frequency: Annotated[tuple[float, float], Pair(FREQUENCY, ("99 MHz", "101 MHz"), single=True, equal=True)] = _need(
+        "Frequency of the source, or its tuning span"
+    )
+    level: Annotated[float, LEVEL_DBM] = _default("10 dBm", "Level of the carrier")
+    lines: dict[Annotated[Fraction, SOURCE_LINE], Annotated[float, LINE_DBC]] | None = _maybe(
+        'Lines of the source by harmonic number, "1/2" where the oscillator itself multiplies; default: none'
+    )
+    phase_noise: dict[Annotated[float, OFFSET], Annotated[float, NOISE_DBC_HZ]] | None = _maybe(
+        "Single-sideband phase noise by offset; default: none, and none reported"
+    )
+
+
+class MaskTable(Table):
+    """A range of frequency in which another limit holds."""
+
+    from_: Annotated[float, FREQUENCY] = Field(alias="from", description="Lower end of the range")
+    to: Annotated[float, FREQUENCY] = _need("Upper end of the range")
+    limit: Annotated[float, LIMIT] = _need("Limit of every unwanted line in the range, relative to the carrier")
+
+
+class OutputTable(Table):
+    """What is asked of the last node."""
+
+    level: Annotated[float | None, LEVEL_DBM] = _maybe("Level asked for, a warning beyond 2 dB; default: none")
+    limit: Annotated[float | None, LIMIT] = _maybe("Limit of every unwanted line; required unless a mask is given")
+    mask: list[MaskTable] | None = _maybe("Ranges in which another limit replaces the general one; default: none")
+
+
+class DesignTable(Table):
+    """What the filters are designed to."""
+
+    impedance: Annotated[float, RESISTANCE] = _default("50 ohm", "Impedance between which the filters work")
+    kit: Annotated[str, Text("the name of a kit or of a kit file", 200)] = _default(
+        "chip-0603", "Parts to build from: a shipped kit, or a kit file ending in .toml, relative to the scenario"
+    )
+    families: Annotated[tuple[Family, ...], Several(Choice(get_args(Family)))] = _default(
+        ["butterworth", "chebyshev"], "Filter families to choose from"
+    )
+    ripple: Annotated[float, RIPPLE] = _default("0.1 dB", "Passband ripple of the Chebyshev filters")
+    max_order: Annotated[int, ORDER] = _default(9, "Most resonators in one filter")
+    flatness: Annotated[float, RATIO_DB.between(0.01, 6, example="1 dB")] = _default(
+        "1 dB", "Loss at the worst point of span and drift, less the midband loss, at most"
+    )
+    loss: Annotated[float, RATIO_DB.between(0, 60, above=True, example="6 dB")] = _default(
+        "6 dB", "Midband loss of one filter, at most"
+    )
+    drift: Annotated[float, PERCENT.between(0, 20, example="1 %")] = _default(
+        "1 %", "Movement of a filter's centre as a whole, to either side"
+    )
+    margin: Annotated[float, RATIO_DB.between(0, 40)] = _default("3 dB", "Margin to every limit")
+    phases: Annotated[Phases, Choice(get_args(Phases))] = _default(
+        "worst-case", "How paths into one line combine: amplitudes add (worst-case) or powers (average)"
+    )
+    isolation: Annotated[
+        float | None, Either("none", float("inf"), RATIO_DB.between(0, 200, above=True, example="75 dB"))
+    ] = _maybe('Leakage past a filter, flat, or "none"; default: 75 dB to 1 GHz, 20 dB a decade less above')
+    reflection: Annotated[float | None, REFLECTION] = _maybe(
+        "Reflection factor of the device facing a filter, 0 for no mismatch allowance; default: the neighbour's own"
+    )
+    termination: Annotated[float | None, RATIO_DB.between(0, 20, example="1.5 dB")] = _maybe(
+        "Spread of conversion into a reflective load; default: 3 dB without a pad, 1.5 dB with 3 dB, 1 dB with 6 dB"
+    )
+    unloaded_q: Annotated[float | None, QUALITY] = _maybe("Unloaded Q of a resonator; default: from kit and topology")
+    min_bandwidth: Annotated[float | None, Either("kit", None, PERCENT.between(0, 100, above=True))] = _default(
+        "kit", 'Narrowest bandwidth as a share of the centre, or "kit": from kit and tolerance'
+    )
+    topology: Annotated[tuple[str, ...], TopologyRule(several=True)] = _default(
+        "auto", 'Circuit to build: "auto", a name, or a list of names'
+    )
+    tuned: Annotated[bool, Flag()] = _default(False, "Resonators are adjusted on the bench")
+
+
+class DeviceTable(Table):
+    """A multiplier."""
+
+    type: Annotated[DeviceType, Choice(get_args(DeviceType))] = _need("Waveform of the multiplier")
+    conversion: Annotated[float | None, RATIO_DB.between(-80, 40, example="-9 dB")] = _maybe(
+        "Conversion gain from carrier to wanted line; required, but 0 dB for power-law"
+    )
+    half_angle: Annotated[float | None, ANGLE] = _maybe(
+        "Conduction half-angle of single-ended, push-push and push-pull; default: x2 70 deg, x3 50 deg, else 120/N deg"
+    )
+    balance: Annotated[float, RATIO_DB.between(0, 100, example="25 dB")] = _default(
+        "25 dB", "Balance of push-push and push-pull"
+    )
+    steepness: Annotated[float, Number(0, 1000, above=True)] = _default(10, "Steepness g of the limiter tanh(g x + b)")
+    class_: Annotated[DeviceClass, Choice(get_args(DeviceClass))] = Field(
+        default="resistive", alias="class", description="What limits the conversion gain in principle"
+    )
+    drive: Annotated[tuple[float, float] | None, Pair(LEVEL_DBM, ("7 dBm", "13 dBm"))] = _maybe(
+        "Drive window; nominal drive is its middle; default: the planned level is nominal, no window checked"
+    )
+    lines: dict[Annotated[int, DEVICE_LINE], Annotated[float, LINE_DBC.between(-250, 40, example="-25 dBc")]] | None = (
+        _maybe("Output lines by harmonic of the input, relative to the wanted line; default: those of the waveform")
+    )
+    reflection: Annotated[float, REFLECTION] = _default(0.7, "Reflection factor of the multiplier's output and input")
+
+
+class AmplifierTable(Table):
+    """A gain block behind a stage's filter."""
+
+    gain: Annotated[float, RATIO_DB.between(-40, 80, example="20 dB")] = _need("Gain")
+    saturation: Annotated[float | None, LEVEL_DBM] = _maybe("Saturated output level; default: linear")
+    noise_figure: Annotated[float | None, RATIO_DB.between(0, 50, example="4 dB")] = _maybe(
+        "Noise figure; default: not counted"
+    )
+    lines: dict[Annotated[int, AMPLIFIER_LINE], Annotated[float, LINE_DBC]] | None = _maybe(
+        "The amplifier's own lines by harmonic of its carrier; default: none"
+    )
+    reflection: Annotated[float, REFLECTION] = _default(0.3, "Reflection factor of the amplifier's input")
+
+
+class FilterTable(Table):
+    """A filter the user already has in mind."""
+
+    family: Annotated[Family, Choice(get_args(Family))] = _need("Filter family")
+    order: Annotated[int, ORDER] = _need("Number of resonators")
+    centre: Annotated[float, FREQUENCY] = _need("Centre frequency")
+    bandwidth: Annotated[Width, WidthRule(FREQUENCY.between(1, 1e12, example="60 MHz"), PERCENT)] = _need(
+        "Bandwidth, 3 dB for Butterworth and ripple for Chebyshev: a frequency or a share of the centre"
+    )
+    ripple: Annotated[float | None, RIPPLE] = _maybe("Passband ripple of Chebyshev; default: the stage's design ripple")
+    topology: Annotated[str | None, TopologyRule(several=False)] = _maybe(
+        "Circuit, built from the stage's kit with its strays; default: none, the prototype itself"
+    )
+    unloaded_q: Annotated[float | None, QUALITY] = _maybe("Unloaded Q of a resonator; default: lossless")
+
+
+def _filter_tag(value: object) -> str:
+    return "table" if isinstance(value, dict | FilterTable) else "word"
+
+
+def _without_defaults(schema: dict[str, Any]) -> None:
+    """Drop the defaults of design keys: in a stage the default is what [design] says."""
+    for name in DesignTable.model_fields:
+        schema["properties"][name].pop("default", None)
+
+
+class StageTable(DesignTable):
+    """Multiplier, pad, filter, pad_after and amplifier, in this order; every key of [design] may be overridden."""
+
+    model_config = ConfigDict(json_schema_extra=_without_defaults)
+
+    name: Annotated[str | None, Text("a name", 60)] = _maybe(
+        'Name, different for each stage; default: "stage 1" and so on'
+    )
+    times: Annotated[int, Number(1, LARGEST_FACTOR, whole=True)] = _need("Factor; 1 is a plain clean-up stage")
+    device: DeviceTable | None = _maybe("The multiplier; required unless times is 1")
+    pad: Annotated[float | None, RATIO_DB] = _maybe("Pad between multiplier and filter; default: none")
+    pad_after: Annotated[float | None, RATIO_DB] = _maybe("Pad behind the filter; default: none")
+    limit: Annotated[float | None, LIMIT] = _maybe("Limit of every unwanted line at this stage's output; default: none")
+    filter: Annotated[
+        Annotated[FilterTable, Tag("table")] | Annotated[str, FilterWord(), Tag("word")], Discriminator(_filter_tag)
+    ] = _default("plan", '"plan", "none", or a given filter')
+    amplifier: AmplifierTable | None = _maybe("Amplifier behind the filter; default: none")
+
+
+class Document(Table):
+    """A multiplier chain with its limits."""
+
+    title: Annotated[str | None, Text("a title", 200)] = _maybe("What the chain is for; default: the file's name")
+    source: SourceTable = _need("The table [source] with at least a frequency")
+    output: OutputTable = _need("The table [output] with a limit or a mask")
+    design: DesignTable = Field(default=DesignTable(), description="The table [design]")
+    stage: list[StageTable] = _need("The tables [[stage]], in the order of the chain")

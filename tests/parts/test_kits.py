@@ -1,0 +1,130 @@
+"""Kits: the shipped ones are complete and self-consistent; Q, self-resonance and floor follow their laws."""
+
+import math
+from pathlib import Path
+
+import numpy as np
+import pytest
+from hypothesis import given
+from hypothesis import strategies as st
+
+from harmonic_planner.parts.kit_files import KitTable
+from harmonic_planner.parts.kits import Kit, kit_names, load_kit
+
+KITS = {name: load_kit(name, Path()) for name in kit_names()}
+kits = st.sampled_from(list(KITS.values()))
+
+
+def test_shipped_kits():
+    assert kit_names() == ("chip-0603", "chip-1008")
+    assert [kit.name for kit in KITS.values()] == list(kit_names())
+
+
+@pytest.mark.parametrize("kit", KITS.values(), ids=lambda kit: kit.name)
+def test_every_value_of_a_shipped_kit_carries_its_basis(kit: Kit):
+    keys = {
+        f"{table}.{key}"
+        for table, field in KitTable.model_fields.items()
+        if isinstance(field.annotation, type) and hasattr(field.annotation, "model_fields")
+        for key in field.annotation.model_fields
+    }
+    assert set(kit.basis) == keys
+    assert all(text.startswith("(memory) ") and len(text) > 15 for text in kit.basis.values())
+
+
+# common practice, no source (memory): what parts of these sizes show on data sheets
+@pytest.mark.parametrize(
+    "name, inductance_h, low_hz, high_hz",
+    [
+        ("chip-0603", 166e-9, 1.0e9, 1.3e9),
+        ("chip-0603", 10e-9, 4e9, 5e9),
+        ("chip-0603", 390e-9, 0.6e9, 1.0e9),
+        ("chip-1008", 10e-9, 3.5e9, 4.5e9),
+        ("chip-1008", 1e-6, 0.2e9, 0.32e9),
+        ("chip-1008", 4.7e-6, 0.08e9, 0.15e9),
+    ],
+)
+def test_self_resonance_is_where_such_parts_have_it(name, inductance_h, low_hz, high_hz):
+    assert low_hz <= KITS[name].inductor.self_resonance_hz(inductance_h) <= high_hz
+
+
+# common practice, no source (memory)
+@pytest.mark.parametrize(
+    "name, frequency_hz, low, high",
+    [
+        ("chip-0603", 250e6, 35, 45),
+        ("chip-0603", 1e9, 70, 80),
+        ("chip-1008", 250e6, 50, 60),
+        ("chip-1008", 60e6, 25, 40),
+    ],
+)
+def test_inductor_q_is_what_such_parts_show(name, frequency_hz, low, high):
+    assert low <= KITS[name].inductor.q(frequency_hz) <= high
+
+
+def test_a_larger_part_resonates_lower_and_reaches_higher_values():
+    small, large = KITS["chip-0603"].inductor, KITS["chip-1008"].inductor
+    assert large.largest_h == pytest.approx(4.7e-6)
+    for inductance_h in (10e-9, 100e-9, 390e-9):
+        assert large.self_resonance_hz(inductance_h) < small.self_resonance_hz(inductance_h)
+
+
+def test_a_mounted_capacitor_of_100_pf_resonates_near_0p7_ghz():
+    # common practice, no source (memory)
+    assert KITS["chip-0603"].capacitor.self_resonance_hz(100e-12) == pytest.approx(0.7e9, rel=0.05)
+
+
+@given(kits, st.floats(1e-9, 4e-6))
+def test_parallel_capacitance_gives_the_self_resonance_back(kit: Kit, inductance_h: float):
+    capacitance_f = kit.inductor.parallel_capacitance_f(inductance_h)
+    resonance_hz = 1 / (2 * math.pi * math.sqrt(inductance_h * capacitance_f))
+    assert resonance_hz == pytest.approx(kit.inductor.self_resonance_hz(inductance_h), rel=1e-12)
+    assert 0.03e-12 < capacitance_f < 1e-12
+
+
+@given(kits, st.floats(1e7, 3e9), st.floats(1e-12, 1e-9))
+def test_capacitor_q_is_reactance_over_resistance(kit: Kit, frequency_hz: float, capacitance_f: float):
+    reactance = 1 / (2 * math.pi * frequency_hz * capacitance_f)
+    q = float(kit.capacitor.q(capacitance_f, frequency_hz))
+    assert q == pytest.approx(reactance / float(kit.capacitor.resistance_ohm(capacitance_f, frequency_hz)), rel=1e-12)
+    assert q < 1 / kit.capacitor.dissipation
+
+
+@given(kits, st.floats(1e7, 3e9), st.floats(5.0, 500.0))
+def test_resonator_q_is_below_both_of_its_parts(kit: Kit, frequency_hz: float, reactance_ohm: float):
+    capacitance_f = 1 / (2 * math.pi * frequency_hz * reactance_ohm)
+    q_l, q_c = float(kit.inductor.q(frequency_hz)), float(kit.capacitor.q(capacitance_f, frequency_hz))
+    q = kit.unloaded_q(frequency_hz, reactance_ohm)
+    assert q < min(q_l, q_c)
+    assert 1 / q == pytest.approx(1 / q_l + 1 / q_c, rel=1e-12)
+
+
+@given(kits, st.floats(1e7, 3e9), st.floats(1.01, 3.0))
+def test_inductor_q_grows_until_it_is_capped(kit: Kit, frequency_hz: float, step: float):
+    low, high = kit.inductor.q(np.array([frequency_hz, frequency_hz * step]))
+    assert low <= high <= kit.inductor.q_most
+
+
+@pytest.mark.parametrize("kit", KITS.values(), ids=lambda kit: kit.name)
+def test_bandwidth_floor_from_tolerance_or_drift(kit: Kit):
+    # common practice, no source (memory): 5 % inductors with 2 % capacitors make 3.5 %, five times that untuned
+    assert kit.resonator_tolerance == pytest.approx(0.035)
+    assert kit.bandwidth_floor(tuned=False, drift=0.01) == pytest.approx(0.175)
+    assert kit.bandwidth_floor(tuned=True, drift=0.01) == pytest.approx(0.03)
+
+
+def test_resonator_tolerance_is_the_worst_shift_of_the_resonance():
+    # independent: f = 1/(2π sqrt(LC)) with both parts off by their tolerance, to first order
+    kit = KITS["chip-0603"]
+    shift = 1 - 1 / math.sqrt((1 + kit.inductor.tolerance) * (1 + kit.capacitor.tolerance))
+    assert kit.resonator_tolerance == pytest.approx(shift, rel=0.06)
+
+
+@pytest.mark.parametrize("kit", KITS.values(), ids=lambda kit: kit.name)
+def test_grids_span_the_ranges(kit: Kit):
+    for values, smallest, largest in (
+        (kit.inductor.values_h(), kit.inductor.smallest_h, kit.inductor.largest_h),
+        (kit.capacitor.values_f(), kit.capacitor.smallest_f, kit.capacitor.largest_f),
+    ):
+        assert smallest <= values[0] < smallest * 1.25
+        assert largest / 1.25 < values[-1] <= largest
