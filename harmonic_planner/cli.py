@@ -14,7 +14,7 @@ import signal
 import sys
 import threading
 import traceback
-from collections.abc import Iterator, Sequence
+from collections.abc import Callable, Iterator, Sequence
 from contextlib import contextmanager, suppress
 from pathlib import Path
 from types import FrameType
@@ -25,7 +25,7 @@ import typer
 from harmonic_planner import __version__
 from harmonic_planner.export import folder
 from harmonic_planner.export.folder import OutputRefusedError, OutputWriteError
-from harmonic_planner.model import PlannerError
+from harmonic_planner.model import Plan, PlannerError
 
 PROGRAM = "harmonic-planner"
 SHIPPED = "glacier-sounder.toml"
@@ -80,7 +80,7 @@ def plan(
     scenario: Annotated[
         Path | None,
         typer.Argument(
-            metavar="[SCENARIO]", show_default=False, help=f"Scenario file (TOML). Without it: the shipped {SHIPPED}."
+            metavar="SCENARIO", show_default=False, help=f"Scenario file (TOML). Without it: the shipped {SHIPPED}."
         ),
     ] = None,
     out: Annotated[
@@ -96,15 +96,11 @@ def plan(
 ) -> int:
     """Plan a chain and write the plan, its tables and its figures.
 
-    Exit status 0: limits met, every filter buildable, self-check passed. 3: planned, but one of these is not so."""
-    from harmonic_planner.planning.plan import make_plan
-    from harmonic_planner.scenario import load
-
+    Exit status 0: limits met, every filter buildable, self-check passed. 3: planned, but one of these is not so.
+    """
     path = shipped_scenario() if scenario is None else scenario
-    asked = load(path)
     target = Path(f"{path.stem}-plan") if out is None else out
-    folder.check(target)
-    result = make_plan(asked)
+    result = _planned(path, before_planning=lambda: folder.check(target))
 
     from harmonic_planner.report import terminal
     from harmonic_planner.report.files import plan_files
@@ -121,11 +117,8 @@ def plan(
 def lines(
     scenario: Annotated[Path, typer.Argument(metavar="SCENARIO", show_default=False, help="Scenario file (TOML).")],
 ) -> int:
-    """Show the comb of spectral lines at every node of the chain, with its filters as planned."""
-    from harmonic_planner.planning.plan import make_plan
-    from harmonic_planner.scenario import load
-
-    result = make_plan(load(scenario))
+    """Show every line at every node of the planned chain."""
+    result = _planned(scenario)
 
     from harmonic_planner.report import terminal
 
@@ -148,7 +141,10 @@ def schema() -> int:
 def new(
     file: Annotated[Path, typer.Argument(metavar="FILE", show_default=False, help="Scenario file to be written.")],
 ) -> int:
-    """Write a commented scenario that plans as it is; an existing file is left alone."""
+    """Write a commented scenario to start from.
+
+    It plans as it is. A file that exists is left alone.
+    """
     from harmonic_planner.scenario import TEMPLATE
 
     try:
@@ -165,6 +161,19 @@ def new(
         raise OutputWriteError(f"new {file}: cannot be written: {fault.strerror or fault}") from fault
     typer.echo(f"Wrote {file}. Plan it with: {PROGRAM} plan {file}")
     return 0
+
+
+def _planned(path: Path, before_planning: Callable[[], None] = lambda: None) -> Plan:
+    """Load a scenario and plan it; `before_planning` may raise once the scenario is known to be good."""
+    from harmonic_planner.planning.plan import make_plan
+    from harmonic_planner.scenario import load
+
+    scenario = load(path)
+    before_planning()
+    try:
+        return make_plan(scenario)
+    except PlannerError as fault:
+        raise PlannerError(f"{path}: {fault}") from fault
 
 
 def shipped_scenario() -> Path:

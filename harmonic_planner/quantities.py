@@ -113,7 +113,7 @@ class Kind(Rule):
         return self._written(value * self.divisor)
 
     def _written(self, number: float) -> str:
-        if self.prefixes:
+        if self.prefixes and abs(number) >= 1:  # below 1 it would write a prefix that is not read, as in mHz
             return str(Quantity(number, self.unit).render(prec="full"))
         return f"{number:.12g} {self.unit}"
 

@@ -73,7 +73,7 @@ class Number(Rule):
     @property
     def allowed(self) -> str:
         """Words that follow "must be"."""
-        ends = range_text(f"{self.low:g}", f"{self.high:g}", above=self.above, below=self.below)
+        ends = range_text(f"{self.low:.12g}", f"{self.high:.12g}", above=self.above, below=self.below)
         return f"a {'whole' if self.whole else 'plain'} number {ends}"
 
     def parse(self, value: object) -> float:
@@ -167,7 +167,7 @@ class Several(Rule):
     @property
     def allowed(self) -> str:
         """Words that follow "must be"."""
-        return "a list of " + self.choice.allowed.removeprefix("one of ") + ", each at most once"
+        return f"a list of {self.choice.allowed.replace('one of', 'one or more of')}, each at most once"
 
     def parse(self, value: object) -> tuple[str, ...]:
         """Read the value."""

@@ -128,7 +128,9 @@ def loads(text: str, *, path: Path) -> Scenario:
     try:
         raw = tomllib.loads(text)
     except tomllib.TOMLDecodeError as error:
-        raise ScenarioError(path, (f"is not valid TOML: {error}",)) from None
+        end = f"at line {text.count(chr(10)) + 1}, column {len(text.rpartition(chr(10))[2]) + 1}, the end of the file"
+        reason = str(error).replace("at end of document", end)
+        raise ScenarioError(path, (f"is not valid TOML: {reason}",)) from None
     except ValueError:  # an integer with thousands of digits
         raise ScenarioError(path, ("is not valid TOML: a number with too many digits",)) from None
     except RecursionError:
@@ -141,7 +143,7 @@ def loads(text: str, *, path: Path) -> Scenario:
         problems.extend(key_problems(error))
     problems.extend(joint_problems(raw, parts_of(raw), folder=path.parent))
     if problems or document is None:
-        raise ScenarioError(path, tuple(problem.line(raw) for problem in problems))
+        raise ScenarioError(path, tuple(dict.fromkeys(problem.line(raw) for problem in problems)))
     return _scenario(document, path)
 
 

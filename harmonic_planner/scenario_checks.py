@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import math
-from collections import Counter
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
 from pathlib import Path
@@ -17,6 +16,7 @@ from harmonic_planner.parts.kits import kit_names, load_kit
 from harmonic_planner.rules import nearest
 from harmonic_planner.scenario_problems import SHAPES, Location, Problem
 from harmonic_planner.scenario_tables import (
+    GAIN,
     LIMIT,
     DesignTable,
     FilterTable,
@@ -27,8 +27,9 @@ from harmonic_planner.scenario_tables import (
 )
 
 MOST_STAGES = 12
-LARGEST_TOTAL = 4096
-"""Largest product of all factors and the common denominator of the source's lines."""
+LARGEST_TOTAL = 1024
+"""Largest product of all factors and the common denominator of the source's lines;
+lines are followed to four times that, and a conversion matrix has their number squared."""
 
 T = TypeVar("T", bound=Table)
 
@@ -102,7 +103,7 @@ def joint_problems(raw: Mapping[str, Any], parts: Parts, *, folder: Path) -> Ite
                 yield from _flatness_problems(i, stage, parts.design)
     yield from _kit_problems(parts, folder)
     yield from _chain_problems(raw, parts)
-    yield from _name_problems(parts)
+    yield from _name_problems(raw)
 
 
 def _source_problems(raw: Mapping[str, Any], source: SourceTable | None) -> Iterator[Problem]:
@@ -138,7 +139,7 @@ def _device_problems(i: int, stage: StageTable) -> Iterator[Problem]:
     if stage.times == 1:
         yield Problem(place, "must be left out where times is 1: a clean-up stage has no multiplier")
     if device.conversion is None and device.type != "power-law":
-        yield Problem((*place, "conversion"), 'missing; must be a gain such as "-9 dB", except for power-law', False)
+        yield Problem((*place, "conversion"), f"missing; must be {GAIN.allowed}, except for power-law", False)
     for key, types in SHAPE_KEYS.items():
         if key in device.model_fields_set and device.type not in types:
             owners = " and ".join((", ".join(types[:-1]), types[-1])) if len(types) > 1 else types[0]
@@ -162,11 +163,16 @@ def _flatness_problems(i: int, stage: StageTable, design: DesignTable) -> Iterat
     if stage.filter != "plan" or "chebyshev" not in design_value("families", design, stage):
         return
     flatness, ripple = (design_value(key, design, stage) for key in ("flatness", "ripple"))
-    if flatness < ripple:
-        owner: Location = ("stage", i) if stage.model_fields_set & {"flatness", "ripple", "families"} else ("design",)
-        key = "flatness" if "flatness" in (stage if owner[0] == "stage" else design).model_fields_set else "ripple"
-        other = f"the ripple, {ripple:g} dB" if key == "flatness" else f"the flatness, {flatness:g} dB"
-        yield Problem((*owner, key), f"must be at {'least' if key == 'flatness' else 'most'} {other}")
+    if flatness >= ripple:
+        return
+    owners: tuple[tuple[Location, DesignTable], ...] = ((("stage", i), stage), (("design",), design))
+    texts = {
+        "flatness": f"must be at least the ripple, {ripple:g} dB",
+        "ripple": f"must be at most the flatness, {flatness:g} dB",
+    }
+    written = [(place, key) for place, table in owners for key in texts if key in table.model_fields_set]
+    place, key = written[0]  # never empty: the defaults agree with each other
+    yield Problem((*place, key), texts[key])
 
 
 def _kit_problems(parts: Parts, folder: Path) -> Iterator[Problem]:
@@ -198,11 +204,12 @@ def _chain_problems(raw: Mapping[str, Any], parts: Parts) -> Iterator[Problem]:
         yield Problem(("stage",), f"the factors multiply to {total}, must be at most {halves}", shown=False)
 
 
-def _name_problems(parts: Parts) -> Iterator[Problem]:
-    names = [stage_name(i, stage) for i, stage in enumerate(parts.stages) if stage is not None]
-    twice = {name for name, count in Counter(names).items() if count > 1}
-    for i, stage in enumerate(parts.stages):
-        if stage is not None and stage.name is not None and stage.name in twice:
+def _name_problems(raw: Mapping[str, Any]) -> Iterator[Problem]:
+    stages = raw.get("stage")
+    items = [item if isinstance(item, dict) else {} for item in stages] if isinstance(stages, list) else []
+    names = [str(item.get("name", f"stage {i + 1}")).strip() for i, item in enumerate(items)]
+    for i, name in enumerate(names):
+        if "name" in items[i] and names.count(name) > 1:
             yield Problem(("stage", i, "name"), "must be a name that no other stage has")
 
 

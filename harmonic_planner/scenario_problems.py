@@ -177,9 +177,10 @@ def key_problems(error: ValidationError) -> Iterator[Problem]:
     Problem
     """
     for found in error.errors(include_url=False):
-        # "table" and "word" name the two branches of a stage's filter, "[key]" marks a key of a table of lines
-        place = tuple(p for p in found["loc"] if p not in ("table", "word", "[key]"))
-        kind, holder = found["type"], _holder(place)
+        kind, place = found["type"], found["loc"]
+        if place[0] == "stage" and place[2:3] == ("filter",):
+            place = place[:3] + place[4:]  # pydantic also names the branch taken, table or word
+        holder = _holder(place)
         if kind == "extra_forbidden":
             yield Problem(place, _unknown(str(place[-1]), holder), shown=False)
         elif kind == "missing":
@@ -187,8 +188,10 @@ def key_problems(error: ValidationError) -> Iterator[Problem]:
             yield Problem(place, f"missing; must be {_allowed(str(place[-1]), field)}", shown=False)
         elif kind == "value_error":
             text = str(found["ctx"]["error"])
-            is_key = found["loc"][-1] == "[key]"
-            yield Problem(place, f"the key {text}" if is_key else text, shown=not is_key)
+            if place[-1] == "[key]":  # pydantic's mark of the key itself
+                yield Problem(place[:-1], f"the key {text}", shown=False)
+            else:
+                yield Problem(place, text)
         else:  # a table or a list where something else stands, or the other way round
             shape = next((str(p) for p in reversed(place) if isinstance(p, str)), "")
             yield Problem(place, f"must be {SHAPES.get(shape, 'a table of keys')}")

@@ -26,6 +26,7 @@ from harmonic_planner.quantities import (
     RATIO_DB,
     RESISTANCE,
     Either,
+    Kind,
     Pair,
     Width,
     WidthRule,
@@ -122,6 +123,7 @@ class FilterWord(Choice):
         return '"plan", "none" or a table { family, order, centre, bandwidth }'
 
 
+GAIN = Kind("a gain", "dB", "-9 dB", -80.0, 40.0)
 RIPPLE = RATIO_DB.between(0.01, 0.5, example="0.1 dB")
 REFLECTION = Number(0, 1, below=True)
 QUALITY = Number(1, 1e6)
@@ -242,7 +244,7 @@ class DeviceTable(Table):
     """A multiplier."""
 
     type: Annotated[DeviceType, Choice(get_args(DeviceType))] = _need("Waveform of the multiplier")
-    conversion: Annotated[float | None, RATIO_DB.between(-80, 40, example="-9 dB")] = _maybe(
+    conversion: Annotated[float | None, GAIN] = _maybe(
         "Conversion gain from carrier to wanted line; required, but 0 dB for power-law"
     )
     half_angle: Annotated[float | None, ANGLE] = _maybe(
@@ -267,7 +269,7 @@ class DeviceTable(Table):
 class AmplifierTable(Table):
     """A gain block behind a stage's filter."""
 
-    gain: Annotated[float, RATIO_DB.between(-40, 80, example="20 dB")] = _need("Gain")
+    gain: Annotated[float, GAIN.between(-40, 80, example="20 dB")] = _need("Gain")
     saturation: Annotated[float | None, LEVEL_DBM] = _maybe("Saturated output level; default: linear")
     noise_figure: Annotated[float | None, RATIO_DB.between(0, 50, example="4 dB")] = _maybe(
         "Noise figure; default: not counted"
@@ -284,9 +286,9 @@ class FilterTable(Table):
     family: Annotated[Family, Choice(get_args(Family))] = _need("Filter family")
     order: Annotated[int, ORDER] = _need("Number of resonators")
     centre: Annotated[float, FREQUENCY] = _need("Centre frequency")
-    bandwidth: Annotated[Width, WidthRule(FREQUENCY.between(1, 1e12, example="60 MHz"), PERCENT)] = _need(
-        "Bandwidth, 3 dB for Butterworth and ripple for Chebyshev: a frequency or a share of the centre"
-    )
+    bandwidth: Annotated[
+        Width, WidthRule(FREQUENCY.between(1, 1e12, example="60 MHz"), PERCENT.between(0, 100, above=True))
+    ] = _need("Bandwidth, 3 dB for Butterworth and ripple for Chebyshev: a frequency or a share of the centre")
     ripple: Annotated[float | None, RIPPLE] = _maybe("Passband ripple of Chebyshev; default: the stage's design ripple")
     topology: Annotated[str | None, TopologyRule(several=False)] = _maybe(
         "Circuit, built from the stage's kit with its strays; default: none, the prototype itself"

@@ -29,7 +29,9 @@ limit = "-50 dBc"
 [design]
 # Parts to build from: "chip-0603", "chip-1008", or a kit file of your own.
 kit = "chip-1008"
+# Impedance between which the filters work.
 impedance = "50 ohm"
+# Filter families to choose from.
 families = ["butterworth", "chebyshev"]
 # Passband ripple of the Chebyshev filters.
 ripple = "0.1 dB"

@@ -21,6 +21,7 @@ LEAST_USEFUL_DB = 3.0
 """A filter's rejection below this is not relied upon: such a line lies at the passband's edge."""
 _RESERVE_DB = 0.4
 _REACH_DB = 200.0
+_HALVINGS = 26
 
 
 @dataclass(frozen=True)
@@ -152,7 +153,7 @@ def _last_that_meets(meets: Callable[[float], bool], *, low: float, high: float)
     """Return the largest x in [low, high] that meets, by bisection; `low` is taken to meet."""
     if meets(high):
         return high
-    for _ in range(40):
+    for _ in range(_HALVINGS):
         middle = (low + high) / 2
         if meets(middle):
             low = middle
@@ -196,9 +197,9 @@ def _relaxed(chain: ChainArrays, rejections_db: Sequence[Array]) -> list[Array]:
         if not bound or not (relaxed[i] > 0).any():
             continue
         slack = np.concatenate([chain.stages[to].limit - combs[to].leaving for to in bound])
-        into = np.concatenate(
-            [path_gains(chain, transmissions, after=i, to=to, allowed=True) for to in bound]
-        ) * (stage.mismatch * combs[i].device)
+        into = np.concatenate([path_gains(chain, transmissions, after=i, to=to, allowed=True) for to in bound]) * (
+            stage.mismatch * combs[i].device
+        )
         distance = np.abs(np.log((np.arange(chain.grid.count) + 1) / (stage.carrier + 1)))
         t = transmissions[i].copy()
         for k in sorted(np.flatnonzero(relaxed[i] > 0), key=lambda k: distance[k]):

@@ -60,9 +60,7 @@ def grid_for(scenario: Scenario) -> LineGrid:
     return LineGrid(q, top * q)
 
 
-def output_limits_dbc(
-    output: Output, low_hz: NDArray[np.float64], high_hz: NDArray[np.float64]
-) -> NDArray[np.float64]:
+def output_limits_dbc(output: Output, low_hz: NDArray[np.float64], high_hz: NDArray[np.float64]) -> NDArray[np.float64]:
     """Return the limit of each line, the strictest over its span.
 
     Parameters

@@ -60,11 +60,15 @@ def origins_text(origins: Iterable[Origin], *, at_least: float = 0.0) -> str:
     -------
     str
         For instance ``line 3 left by first doubler (62 %); line 2 of the source (20 %)``, largest share first.
+        Contributions of one stage by one line, as of its multiplier and its amplifier, are added.
     """
-    ranked = sorted(origins, key=lambda origin: -origin.share)
+    shares: dict[tuple[str, Fraction], float] = {}
+    for origin in origins:
+        born = (origin.stage, origin.line)
+        shares[born] = shares.get(born, 0.0) + origin.share
     return "; ".join(
-        (f"line {o.line} of the source" if o.stage == "source" else f"line {o.line} left by {o.stage}")
-        + f" ({100 * o.share:.0f} %)"
-        for o in ranked
-        if o.share >= at_least
+        (f"line {line} of the source" if stage == "source" else f"line {line} left by {stage}")
+        + f" ({100 * share:.0f} %)"
+        for (stage, line), share in sorted(shares.items(), key=lambda item: -item[1])
+        if share >= at_least
     )

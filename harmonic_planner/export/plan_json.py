@@ -11,6 +11,7 @@ from typing import Any
 from harmonic_planner.model import Plan
 
 _WIDTH = 120
+_RECORD_WIDTH = 500
 
 
 def plain(value: object) -> Any:
@@ -62,11 +63,14 @@ def layout(value: Any, indent: int = 0) -> str:
     Returns
     -------
     str
-        JSON text; an object or array stays on one line where it fits, and an array of numbers always does.
+        JSON text. An array of numbers stays on one line, and so does an object of single values and such arrays while
+        the line is not too long; anything else only where it fits between the margins.
     """
     flat = json.dumps(value, ensure_ascii=False, allow_nan=False)
-    numbers_only = isinstance(value, list) and all(isinstance(item, int | float) for item in value)
-    if not isinstance(value, dict | list) or numbers_only or indent + len(flat) <= _WIDTH:
+    if not isinstance(value, dict | list) or _is_numbers(value):
+        return flat
+    record = isinstance(value, dict) and all(_is_single(item) or _is_numbers(item) for item in value.values())
+    if indent + len(flat) <= (_RECORD_WIDTH if record else _WIDTH):
         return flat
     inner = " " * (indent + 2)
     if isinstance(value, list):
@@ -74,6 +78,16 @@ def layout(value: Any, indent: int = 0) -> str:
         return "[\n" + ",\n".join(rows) + "\n" + " " * indent + "]"
     rows = [f"{inner}{json.dumps(key, ensure_ascii=False)}: {layout(item, indent + 2)}" for key, item in value.items()]
     return "{\n" + ",\n".join(rows) + "\n" + " " * indent + "}"
+
+
+def _is_single(value: Any) -> bool:
+    """Tell a text, number, bool or None from a container."""
+    return not isinstance(value, dict | list)
+
+
+def _is_numbers(value: Any) -> bool:
+    """Tell an array of numbers."""
+    return isinstance(value, list) and all(isinstance(item, int | float) for item in value)
 
 
 def plan_json(plan: Plan, files: Iterable[str] = ()) -> str:

@@ -1,0 +1,1 @@
+"""One filter: window, circuit, response, flags."""

@@ -86,6 +86,15 @@ class Circuit:
         ends = tuple(dict.fromkeys((INPUT, self.output)))
         return (INPUT, *(node for node in inner if node not in ends), *ends[1:])
 
+    def stranded_nodes(self) -> tuple[str, ...]:
+        """Return the nodes without a path to the input or output that avoids ground."""
+        reached, grown = {INPUT, self.output}, True
+        while grown:
+            ends = {n for element in self.elements if reached & set(element.live_nodes) for n in element.live_nodes}
+            grown = not ends <= reached
+            reached |= ends
+        return tuple(node for node in self.nodes if node not in reached)
+
     def reversed(self) -> Circuit:
         """Return the same circuit driven from its load side, which gives S12 and S22."""
         swap = {INPUT: self.output, self.output: INPUT}

@@ -127,8 +127,10 @@ def nodal_sweep(
 
     Raises
     ------
+    CircuitError
+        For a node without a path to a port.
     PlannerError
-        For frequencies or a Q that are not above zero, or a node without a path to ground or to a port.
+        For frequencies or a Q that are not above zero.
 
     Notes
     -----
@@ -136,6 +138,8 @@ def nodal_sweep(
     with `sweep` the immittance of an element and nothing else, and serves as its check.
     """
     frequency = _frequencies(frequency_hz)
+    for node in circuit.stranded_nodes():
+        raise CircuitError(f"{circuit.topology}: node {node} has no path to the input or output")
     losses = _Losses(circuit, frequency, kit, unloaded_q)
     index = {node: place for place, node in enumerate(circuit.nodes)}
     matrix = np.zeros((frequency.size, len(index), len(index)), dtype=np.complex128)
@@ -152,10 +156,7 @@ def nodal_sweep(
     matrix[:, load, load] += 1.0 / circuit.load_ohm
     drive = np.zeros((frequency.size, len(index), 1), dtype=np.complex128)
     drive[:, source, 0] = 1.0 / circuit.source_ohm
-    try:
-        voltage = np.linalg.solve(matrix, drive)[:, :, 0]
-    except np.linalg.LinAlgError as error:
-        raise CircuitError(f"{circuit.topology}: a node has no path to ground or to a port") from error
+    voltage = np.linalg.solve(matrix, drive)[:, :, 0]
     s21 = 2.0 * math.sqrt(circuit.source_ohm / circuit.load_ohm) * voltage[:, load]
     return Response(frequency, s21, 2.0 * voltage[:, source] - 1.0)
 

@@ -23,8 +23,8 @@ class Task:
     line_low_hz, line_high_hz
         (n_lines,) lowest and highest frequency of every unwanted line [Hz].
     rejection_db
-        (n_lines,) rejection each needs relative to the carrier, margin and allowances included [dB]. Lines that need none (0 or
-        less) are passed over.
+        (n_lines,) rejection each needs relative to the carrier, margin and allowances included [dB]. Lines that need
+        none (0 or less) are passed over.
     flatness_db, loss_db
         Greatest flatness and greatest midband loss [dB].
     drift
@@ -124,3 +124,15 @@ def _absorb_drift(task: Task) -> Edges:
         rejection_db=task.rejection_db[index],
         overlap=int(overlapping[0]) if overlapping.size else None,
     )
+
+
+def line_text(task: Task, line: int) -> str:
+    """Write where a line lies: ``400 MHz``, ``396 to 404 MHz``."""
+    return span_text(float(task.line_low_hz[line]), float(task.line_high_hz[line]))
+
+
+def span_text(low_hz: float, high_hz: float) -> str:
+    """Write a span of frequencies: ``400 MHz``, ``396 to 404 MHz``."""
+    scale, unit = next(((s, u) for s, u in ((1e9, "GHz"), (1e6, "MHz"), (1e3, "kHz")) if high_hz >= s), (1.0, "Hz"))
+    low, high = f"{low_hz / scale:.5g}", f"{high_hz / scale:.5g}"
+    return f"{high} {unit}" if low == high else f"{low} to {high} {unit}"

@@ -1,20 +1,21 @@
 """Least order, bandwidth window and centre of one bandpass, losses and drift included.
 
-With t = ln f0 and y = Δ/2 the mapping is Ω(f) = |sinh(ln f − t)|/y. The drift d moves the centre to f0·(1 ± d) and is absorbed into
-the edges: the passband [p1, p2] into a = ln(p1/(1 + d)) and b = ln(p2/(1 − d)), a line below it into s_l = ln(f_hi/(1 − d)), a line
-above it into s_u = ln(f_lo/(1 + d)). With the passband edge Ω_p and the rejection points Ω_j of `passband` the centres allowed at
-a bandwidth are one interval::
+With t = ln f0 and y = Δ/2 the mapping is Ω(f) = |sinh(ln f − t)|/y. The drift d moves the centre to f0·(1 ± d) and is
+absorbed into the edges: the passband [p1, p2] into a = ln(p1/(1 + d)) and b = ln(p2/(1 − d)), a line below it into
+s_l = ln(f_hi/(1 − d)), a line above it into s_u = ln(f_lo/(1 + d)). With the passband edge Ω_p and the rejection points
+Ω_j of `passband` the centres allowed at a bandwidth are one interval::
 
     t ≥ b − asinh(Ω_p·y),   t ≥ s_l + asinh(Ω_l·y);     t ≤ a + asinh(Ω_p·y),   t ≤ s_u − asinh(Ω_u·y)
 
-and a bandwidth is allowed where the interval is not empty, the midband loss is within its limit, and floor ≤ Δ ≤ cap. Ω_p and Ω_j
-depend on Δ through the dissipation, so that the allowed bandwidths are found by a scan of Δ whose ends are then refined.
+and a bandwidth is allowed where the interval is not empty, the midband loss is within its limit, and floor ≤ Δ ≤ cap.
+Ω_p and Ω_j depend on Δ through the dissipation, so that the allowed bandwidths are found by a scan of Δ whose ends are
+then refined (`bandwidths`).
 
 Definitions
 -----------
-*Flatness* is the loss at the worst point of span and drift minus that at the best; Ω_p is the largest Ω with max − min of A on
-[0, Ω] within it. *Carrier loss* is midband loss + flatness. A line is *satisfied* where A, at its least over span and drift, is at
-least rejection + carrier loss; beyond Ω_j that holds for every Ω.
+*Flatness* is the loss at the worst point of span and drift minus that at the best; Ω_p is the largest Ω with max − min
+of A on [0, Ω] within it. *Carrier loss* is midband loss + flatness. A line is *satisfied* where A, at its least over
+span and drift, is at least rejection + carrier loss; beyond Ω_j that holds for every Ω.
 """
 
 from __future__ import annotations
@@ -26,10 +27,10 @@ from functools import lru_cache
 from typing import Final
 
 import numpy as np
-from numpy.typing import NDArray
 
-from harmonic_planner.filters.passband import LossyResponse, edge_and_rejection_points, lossy_response, turning_points
-from harmonic_planner.filters.task import Task
+from harmonic_planner.filters.bandwidths import Centres, Found, centres_at, search
+from harmonic_planner.filters.passband import LossyResponse, lossy_response, turning_points
+from harmonic_planner.filters.task import Task, line_text, span_text
 from harmonic_planner.model import Family
 from harmonic_planner.physics.prototypes import DB_PER_LN, FloatArray, Prototype
 
@@ -37,12 +38,10 @@ __all__ = ["NARROWEST", "Task", "WindowResult", "centres", "least_order", "rejec
 
 NARROWEST: Final = 1e-4
 """Least bandwidth that is looked at, as a fraction of the centre."""
-_SCAN: Final = 50
-"""Bandwidths of the first scan, evenly spaced in ln Δ between the least allowed and the cap."""
+_TOLERANCE: Final = 1e-9
+"""Relative rounding allowed in a bandwidth, or in the width of a centre interval, that is asked about."""
 _TOLERANCE_DB: Final = 1e-9
 """Rounding allowed when a ripple is compared with a flatness, or a loss with its limit [dB]."""
-_TOLERANCE: Final = 1e-9
-"""Relative width to which the ends of a window are refined; the end that is kept is always an allowed one."""
 
 
 @dataclass(frozen=True)
@@ -64,49 +63,6 @@ class WindowResult:
     """Allowed centres at the widest bandwidth [Hz]."""
     pieces: int = 0
     """Intervals of allowed bandwidths that the scan saw; the window is the widest of them."""
-
-
-@dataclass(frozen=True, eq=False)
-class _Scan:
-    """Centre intervals of p prototypes at k bandwidths; every array (p, k)."""
-
-    bandwidth: FloatArray
-    low: FloatArray
-    high: FloatArray
-    passing: FloatArray
-    """Width of the interval that the passband alone allows."""
-    low_by: NDArray[np.intp]
-    """Which condition sets the lower end: 0 the passband, j ≥ 1 the lower line j − 1."""
-    high_by: NDArray[np.intp]
-
-    @property
-    def width(self) -> FloatArray:
-        """Width of the interval in ln f0: allowed where it is not negative."""
-        return self.high - self.low
-
-
-def _evaluate(prototypes: tuple[Prototype, ...], task: Task, bandwidth: FloatArray) -> _Scan:
-    """Return the centre intervals at `bandwidth` (p, k), loss limit and floor aside."""
-    edges = task.edges
-    sigma = 1.0 / (bandwidth * task.unloaded_q)
-    edge, points = edge_and_rejection_points(
-        prototypes, sigma, flatness_db=task.flatness_db, rejection_db=edges.rejection_db
-    )
-    half = 0.5 * bandwidth
-    reach = np.arcsinh(edge * half)
-    clear = np.arcsinh(points * half[..., np.newaxis])
-    lower = edges.lower + clear[..., : edges.lower.size]
-    upper = edges.upper - clear[..., edges.lower.size :]
-    lows = np.concatenate([(edges.b - reach)[..., np.newaxis], lower], axis=-1)
-    highs = np.concatenate([(edges.a + reach)[..., np.newaxis], upper], axis=-1)
-    return _Scan(
-        bandwidth=bandwidth,
-        low=lows.max(axis=-1),
-        high=highs.min(axis=-1),
-        passing=highs[..., 0] - lows[..., 0],
-        low_by=lows.argmax(axis=-1),
-        high_by=highs.argmin(axis=-1),
-    )
 
 
 def solve(prototype: Prototype, task: Task) -> WindowResult:
@@ -144,8 +100,8 @@ def scan(task: Task, *, families: Sequence[Family], ripple_db: float, max_order:
     Returns
     -------
     tuple of WindowResult
-        Family by family, order 1 … `max_order`. Every order is tried, since the loss limit makes a higher order fail where a lower
-        one serves.
+        Family by family, order 1 … `max_order`. Every order is tried, since the loss limit makes a higher order fail
+        where a lower one serves.
     """
     prototypes = tuple(Prototype(family, order, ripple_db) for family in families for order in range(1, max_order + 1))
     return _solve(prototypes, task)
@@ -177,8 +133,8 @@ def centres(prototype: Prototype, task: Task, bandwidth: float) -> tuple[float, 
     narrowest = _narrowest(prototype, task)
     if isinstance(narrowest, str) or not narrowest * (1.0 - _TOLERANCE) <= bandwidth <= task.cap * (1.0 + _TOLERANCE):
         return None
-    found = _evaluate((prototype,), task, np.array([[bandwidth]]))
-    return _interval_hz(found, 0, 0) if found.width[0, 0] >= -_TOLERANCE else None
+    found = centres_at((prototype,), task, np.array([[bandwidth]]))
+    return found.interval_hz(0, 0) if found.width[0, 0] >= -_TOLERANCE else None
 
 
 def rejection_db(
@@ -241,8 +197,8 @@ def _narrowest(prototype: Prototype, task: Task) -> float | str:
     edges = task.edges
     if edges.overlap is not None:
         return (
-            f"the line at {_line_text(task, edges.overlap)} overlaps the carrier"
-            f" ({_span_text(*task.passband_hz)}) within the drift of {100.0 * task.drift:g} %"
+            f"the line at {line_text(task, edges.overlap)} overlaps the carrier"
+            f" ({span_text(*task.passband_hz)}) within the drift of {100.0 * task.drift:g} %"
         )
     if task.floor > task.cap:
         return f"the bandwidth floor of {100.0 * task.floor:.3g} % is above the cap of {100.0 * task.cap:.3g} %"
@@ -273,7 +229,7 @@ def _greatest_sigma(prototype: Prototype, loss_db: float) -> float:
         sigma -= step
         if abs(step) <= 1e-15 * sigma:
             break
-    return sigma
+    return float(sigma)
 
 
 def _solve(prototypes: tuple[Prototype, ...], task: Task) -> tuple[WindowResult, ...]:
@@ -284,142 +240,38 @@ def _solve(prototypes: tuple[Prototype, ...], task: Task) -> tuple[WindowResult,
         for i, (prototype, least) in enumerate(zip(prototypes, narrowest, strict=True))
         if isinstance(least, str)
     }
-    open_ = [i for i in range(len(prototypes)) if i not in found]
-    if open_:
+    rest = [i for i in range(len(prototypes)) if i not in found]
+    if rest:
         start = np.array([least for least in narrowest if not isinstance(least, str)])
-        windows = _search(tuple(prototypes[i] for i in open_), task, start)
-        found.update(zip(open_, windows, strict=True))
+        outcome = search(tuple(prototypes[i] for i in rest), task, start)
+        for row, i in enumerate(rest):
+            found[i] = _result(prototypes[i], task, outcome, row, float(start[row]))
     return tuple(found[i] for i in range(len(prototypes)))
 
 
-def _search(prototypes: tuple[Prototype, ...], task: Task, start: FloatArray) -> list[WindowResult]:
-    """Scan the bandwidths from `start` (p,) to the cap and refine the ends of the widest allowed interval."""
-    share = np.linspace(0.0, 1.0, _SCAN)
-    grid = np.exp(np.log(start)[:, np.newaxis] * (1.0 - share) + math.log(task.cap) * share)
-    grid[:, 0], grid[:, -1] = start, task.cap
-    coarse = _evaluate(prototypes, task, grid)
-    runs = [_runs(row) for row in coarse.width >= 0.0]
-    # good and bad end of the bracket of either end, as columns of the grid; equal where there is nothing to refine
-    good = np.zeros((len(prototypes), 2), dtype=np.intp)
-    bad = np.zeros_like(good)
-    for i, pieces in enumerate(runs):
-        if pieces:
-            first, last = max(pieces, key=lambda run: grid[i, run[1]] - grid[i, run[0]])
-            good[i], bad[i] = (first, last), (max(first - 1, 0), min(last + 1, _SCAN - 1))
-        else:
-            passes = np.flatnonzero(coarse.passing[i] >= 0.0)
-            good[i] = passes[0] if passes.size else _SCAN - 1
-            bad[i] = (max(good[i, 0] - 1, 0), good[i, 1]) if passes.size else good[i]
-    has_run = np.array([bool(pieces) for pieces in runs])
-    measure = np.where(has_run[:, np.newaxis], coarse.width, coarse.passing)
-    ends = _refine(prototypes, task, grid, measure, good, bad, by_passband=~has_run)
-    final = _evaluate(prototypes, task, ends)
-    sliver = ~has_run & (final.width[:, 0] >= 0.0)
-    if sliver.any():
-        # narrower than a step of the scan: from the narrowest that passes to somewhere below the next point of the scan
-        grid[:, 0] = np.where(sliver, ends[:, 0], grid[:, 0])
-        measure = coarse.width
-        measure[:, 0] = np.where(sliver, final.width[:, 0], measure[:, 0])
-        upper_bad = np.where(sliver, good[:, 0], 0)
-        bad = np.stack([np.zeros_like(upper_bad), upper_bad], axis=-1)
-        upper = _refine(prototypes, task, grid, measure, np.zeros_like(bad), bad, by_passband=np.zeros_like(sliver))
-        ends[:, 1] = np.where(sliver, upper[:, 1], ends[:, 1])
-        final = _evaluate(prototypes, task, ends)
-    return [
-        WindowResult(
-            prototype,
-            feasible=True,
-            reason="",
-            bandwidth_min=float(ends[i, 0]),
-            bandwidth_max=float(ends[i, 1]),
-            centres_min_hz=_interval_hz(final, i, 0),
-            centres_max_hz=_interval_hz(final, i, 1),
-            pieces=max(len(runs[i]), 1),
-        )
-        if has_run[i] or sliver[i]
-        else WindowResult(prototype, feasible=False, reason=_why_not(prototype, task, final, i, float(start[i])))
-        for i, prototype in enumerate(prototypes)
-    ]
+def _result(prototype: Prototype, task: Task, outcome: Found, row: int, narrowest: float) -> WindowResult:
+    """Turn one row of a search into its result."""
+    ends = outcome.ends
+    if not outcome.feasible[row]:
+        return WindowResult(prototype, feasible=False, reason=_why_not(prototype, task, ends, row, narrowest))
+    return WindowResult(
+        prototype,
+        feasible=True,
+        reason="",
+        bandwidth_min=float(ends.bandwidth[row, 0]),
+        bandwidth_max=float(ends.bandwidth[row, 1]),
+        centres_min_hz=ends.interval_hz(row, 0),
+        centres_max_hz=ends.interval_hz(row, 1),
+        pieces=int(outcome.pieces[row]),
+    )
 
 
-def _runs(allowed: NDArray[np.bool_]) -> list[tuple[int, int]]:
-    """Return first and last index of every run of True."""
-    change = np.flatnonzero(np.diff(np.concatenate([[False], allowed, [False]]).astype(np.int8)))
-    return [(int(first), int(last) - 1) for first, last in zip(change[::2], change[1::2], strict=True)]
-
-
-_CLUSTER: Final = np.array([0.3, 0.1, 1e-2, 1e-3, 1e-5])
-
-
-def _refine(
-    prototypes: tuple[Prototype, ...],
-    task: Task,
-    grid: FloatArray,
-    measure: FloatArray,
-    good: NDArray[np.intp],
-    bad: NDArray[np.intp],
-    *,
-    by_passband: NDArray[np.bool_],
-) -> FloatArray:
-    """Narrow brackets between an allowed (`good`) and a refused (`bad`) bandwidth; return the allowed ends (p, 2).
-
-    Every pass evaluates points gathered round the secant's root, and three evenly spaced ones, which guard it.
-    """
-    x_good, x_bad = (np.log(np.take_along_axis(grid, i, 1)) for i in (good, bad))
-    v_good, v_bad = (np.take_along_axis(measure, i, 1) for i in (good, bad))
-    kept = np.take_along_axis(grid, good, 1)
-    for _ in range(14):
-        todo = np.abs(x_bad - x_good) > _TOLERANCE
-        if not todo.any():
-            break
-        gap = v_good - v_bad
-        root = np.clip(v_good / np.where(gap > 0.0, gap, 1.0), 0.0, 1.0)[..., np.newaxis]
-        points = np.concatenate(
-            [
-                root * (1.0 - _CLUSTER),
-                root + (1.0 - root) * _CLUSTER,
-                np.broadcast_to([0.25, 0.5, 0.75], (*root.shape[:2], 3)),
-            ],
-            axis=-1,
-        )
-        points.sort(axis=-1)
-        x = x_good[..., np.newaxis] + (x_bad - x_good)[..., np.newaxis] * points
-        bandwidth = np.exp(x)
-        found = _evaluate(prototypes, task, bandwidth.reshape(len(prototypes), -1))
-        value = np.where(by_passband[:, np.newaxis], found.passing, found.width).reshape(x.shape)
-        # with the old ends on either side, the first refused point from the good end outwards
-        x = np.concatenate([x_good[..., np.newaxis], x, x_bad[..., np.newaxis]], axis=-1)
-        value = np.concatenate([v_good[..., np.newaxis], value, v_bad[..., np.newaxis]], axis=-1)
-        bandwidth = np.concatenate([kept[..., np.newaxis], bandwidth, np.zeros_like(kept)[..., np.newaxis]], axis=-1)
-        refused = value < 0.0
-        refused[..., 0], refused[..., -1] = False, True
-        j = np.argmax(refused, axis=-1)[..., np.newaxis]
-        new = (
-            np.take_along_axis(array, index, -1)[..., 0]
-            for array, index in ((x, j - 1), (x, j), (value, j - 1), (value, j))
-        )
-        moved = np.where(todo, np.take_along_axis(bandwidth, j - 1, -1)[..., 0], kept)
-        x_good, x_bad, v_good, v_bad = (
-            np.where(todo, a, old) for a, old in zip(new, (x_good, x_bad, v_good, v_bad), strict=True)
-        )
-        kept = moved
-    return kept
-
-
-def _interval_hz(found: _Scan, p: int, k: int) -> tuple[float, float]:
-    """Return the centre interval [Hz]; one that rounding turned round is a point."""
-    low, high = float(found.low[p, k]), float(found.high[p, k])
-    if low > high:
-        low = high = 0.5 * (low + high)
-    return math.exp(low), math.exp(high)
-
-
-def _why_not(prototype: Prototype, task: Task, found: _Scan, p: int, start: float) -> str:
+def _why_not(prototype: Prototype, task: Task, found: Centres, p: int, start: float) -> str:
     """Say what fails at the narrowest bandwidth that passes the carrier."""
     bandwidth = float(found.bandwidth[p, 0])
     if found.passing[p, 0] < 0.0:
         return (
-            f"no bandwidth up to {100.0 * task.cap:.3g} % passes {_span_text(*task.passband_hz)}"
+            f"no bandwidth up to {100.0 * task.cap:.3g} % passes {span_text(*task.passband_hz)}"
             f" with {task.flatness_db:g} dB flatness and {100.0 * task.drift:g} % drift"
         )
     low_by, high_by = int(found.low_by[p, 0]), int(found.high_by[p, 0])
@@ -436,7 +288,7 @@ def _why_not(prototype: Prototype, task: Task, found: _Scan, p: int, start: floa
     for j in binding:
         omega = 2.0 * abs(math.sinh(float(ends[j]) - centre)) / bandwidth
         got = float(prototype.attenuation_db(omega, sigma)) - carrier
-        line = _line_text(task, int(edges.index[j]))
+        line = line_text(task, int(edges.index[j]))
         parts.append(f"the line at {line} needs {edges.rejection_db[j]:.1f} dB and gets {got:.1f} dB")
     if bandwidth > start:
         which = "the narrowest that passes the carrier"
@@ -449,14 +301,3 @@ def _why_not(prototype: Prototype, task: Task, found: _Scan, p: int, start: floa
             else "the least tried"
         )
     return f"at {100.0 * bandwidth:.3g} % bandwidth, {which}, " + " while ".join(parts)
-
-
-def _line_text(task: Task, line: int) -> str:
-    return _span_text(float(task.line_low_hz[line]), float(task.line_high_hz[line]))
-
-
-def _span_text(low_hz: float, high_hz: float) -> str:
-    """Write a span of frequencies: ``400 MHz``, ``396 to 404 MHz``."""
-    scale, unit = next(((s, u) for s, u in ((1e9, "GHz"), (1e6, "MHz"), (1e3, "kHz")) if high_hz >= s), (1.0, "Hz"))
-    low, high = f"{low_hz / scale:.5g}", f"{high_hz / scale:.5g}"
-    return f"{high} {unit}" if low == high else f"{low} to {high} {unit}"

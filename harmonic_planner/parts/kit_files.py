@@ -231,7 +231,7 @@ def _sentence(fault: Any, values: Mapping[str, Any]) -> str:
             return f"{dotted} = {value!r}: unknown key; nearest: {close[0]}; allowed: {', '.join(allowed)}"
         case "model_type":
             return f"{dotted} = {value!r}: expected a table [{dotted}]"
-        case "value_error" if isinstance(value, dict):
+        case "value_error" if len(tuple(_models(path))) > len(path):  # of a table, not of one value
             return f"{dotted}: {fault['ctx']['error']}"
         case "value_error":
             return f"{dotted} = {value!r}: {fault['ctx']['error']}"

@@ -168,7 +168,7 @@ class Kit:
     """Least bandwidth over a resonator's tolerance, filters that nobody tunes."""
     tuned_factor: float
     """Least bandwidth over the drift, filters tuned on the bench."""
-    basis: Mapping[str, str] = field(default_factory=dict)
+    basis: Mapping[str, str] = field(default_factory=dict, hash=False)
     """Dotted key of the kit file -> where its value comes from."""
 
     @property

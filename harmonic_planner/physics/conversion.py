@@ -3,9 +3,9 @@
 A residual r·cos(kφ/k0 + ψ) beside the carrier cos φ (line k0) makes f(cos φ) + f′(cos φ)·r·cos(…) + …, so it comes out
 at |k + m·k0| for every integer m, with amplitude |G_m|/(2|F_N|) relative to the wanted line per unit of r.
 
-Range of validity: third-order terms change path m by about (m·r/sin θ)²/8, θ the angle of the waveform's corner (90° for
-a limiter), so 0.1 dB holds for m·r ≤ 0.3·sin θ: at −40 dBc up to m = 12 at θ = 24°, m = 30 at 90°. Beyond, the difference
-stays within the second-order bound.
+Range of validity: third-order terms change path m by about (m·r/sin θ)²/8, θ the angle of the waveform's corner (90°
+for a limiter), so 0.1 dB holds for m·r up to about sin θ/4: at −40 dBc up to m = 10 at θ = 24°, m = 25 at 90°. Beyond,
+the difference stays within the second-order bound.
 
 References
 ----------

@@ -150,6 +150,11 @@ def second_half(balance_db: float) -> float:
     ----------
     balance_db
         Balance B [dB]; infinite gives σ = 1, 0 dB gives σ = 0.
+
+    Returns
+    -------
+    float
+        σ, 0 to 1.
     """
     unbalance = 10 ** (-balance_db / 20)
     return (1 - unbalance) / (1 + unbalance)
@@ -164,6 +169,11 @@ def bias_of(device: Device, times: int) -> float:
         A limiter.
     times
         Factor N.
+
+    Returns
+    -------
+    float
+        Bias b.
 
     Raises
     ------

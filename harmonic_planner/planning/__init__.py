@@ -1,0 +1,1 @@
+"""The whole job, from a scenario to a plan."""

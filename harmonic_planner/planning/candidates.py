@@ -102,9 +102,7 @@ def _rejection(job: Job, candidate: Candidate) -> Array:
     """Return A(line, least over span and drift) − midband − flatness with the leak, [dB], shape (lines,)."""
     sigma = 1 / (candidate.bandwidth * job.unloaded_q)
     low, high = job.low_hz / (1 + job.design.drift), job.high_hz / (1 - job.design.drift)
-    edges = bandpass_omega(
-        np.stack([low, high]), centre_hz=candidate.centre_hz, bandwidth=candidate.bandwidth
-    )
+    edges = bandpass_omega(np.stack([low, high]), centre_hz=candidate.centre_hz, bandwidth=candidate.bandwidth)
     omega = np.where((low < candidate.centre_hz) & (high > candidate.centre_hz), 0.0, edges.min(axis=0))
     skirt = candidate.prototype.attenuation_db(omega, sigma) - candidate.carrier_db
     rejection = with_leakage(skirt, candidate.carrier_db, job.leak_db, exponent=job.exponent) - _SHADE_DB

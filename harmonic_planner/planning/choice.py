@@ -6,10 +6,12 @@ the wide end of a window is the one that can be built and loses least.
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 
 import numpy as np
+from numpy.typing import NDArray
 
 from harmonic_planner.chain.leakage import skirt_needed_db
 from harmonic_planner.filters import flags
@@ -123,9 +125,7 @@ def look(
     )
     reachable = np.isfinite(skirts)
     task = task_for(job, np.where(reachable, skirts, 0.0))
-    results = scan(
-        task, families=job.design.families, ripple_db=job.design.ripple_db, max_order=job.design.max_order
-    )
+    results = scan(task, families=job.design.families, ripple_db=job.design.ripple_db, max_order=job.design.max_order)
     leak_reason = "" if reachable.all() else _leak_reason(job, required_db, ~reachable)
     return task, results, tuple(_window(r, leak_reason, buildable=_realisable(job, r)) for r in results)
 
@@ -168,7 +168,9 @@ def widest(job: Job, result: WindowResult, topology: str, task: Task, required_d
         if interval is None:
             return None
         centre_hz = float(np.sqrt(interval[0] * interval[1]))
-        built = build(job, result.prototype, topology, centre_hz=centre_hz, bandwidth=bandwidth, required_db=required_db)
+        built = build(
+            job, result.prototype, topology, centre_hz=centre_hz, bandwidth=bandwidth, required_db=required_db
+        )
         return built if built is not None and meets(job, built) else None
 
     wide, narrow = result.bandwidth_max, result.bandwidth_min
@@ -203,19 +205,20 @@ def _window(result: WindowResult, leak_reason: str, *, buildable: bool) -> Windo
     reason = leak_reason or result.reason
     if result.feasible and not buildable:
         reason = "an even-order Chebyshev ladder does not end in equal impedances"
+    narrow_hz, wide_hz = (math.sqrt(c[0] * c[1]) for c in (result.centres_min_hz, result.centres_max_hz))
     return Window(
         family=result.prototype.family,
         ripple_db=result.prototype.ripple_db,
         order=result.prototype.order,
-        bandwidth_min_hz=result.bandwidth_min * result.centre_hz,
-        bandwidth_max_hz=result.bandwidth_max * result.centre_hz,
-        centre_hz=result.centre_hz,
+        bandwidth_min_hz=result.bandwidth_min * narrow_hz,
+        bandwidth_max_hz=result.bandwidth_max * wide_hz,
+        centre_hz=wide_hz,
         feasible=result.feasible and not leak_reason,
         reason=reason,
     )
 
 
-def _leak_reason(job: Job, required_db: Array, beyond: Array) -> str:
+def _leak_reason(job: Job, required_db: Array, beyond: NDArray[np.bool_]) -> str:
     worst = int(np.argmax(np.where(beyond, required_db - job.leak_db, -np.inf)))
     return (
         f"the line at {job.low_hz[worst] / 1e6:.5g} MHz needs {required_db[worst]:.1f} dB, and the isolation of "

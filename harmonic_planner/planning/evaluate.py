@@ -57,14 +57,19 @@ def run(chain: ChainArrays, transmissions: Sequence[Array]) -> Run:
     return Run(combs, level_db, allowed_db, margin_db)
 
 
+def beyond_db(chain: ChainArrays, transmissions: Sequence[Array], margin_db: Sequence[float]) -> float:
+    """Return the least margin over all limits less the margin asked for there [dB], from a forward run."""
+    allowed = propagate(chain, transmissions, allowed=True)
+    over = [
+        chain.to_db(float(np.max(c.leaving / s.limit))) + m
+        for s, c, m in zip(chain.stages, allowed, margin_db, strict=True)
+    ]
+    return -float(np.max(over))
+
+
 def worst_db(chain: ChainArrays, comb: Array) -> Array:
     """Return the highest level of each line over all points [dBc], shape (lines,)."""
     return chain.to_db(np.reshape(comb, (-1, chain.grid.count)).max(axis=0))
-
-
-def beyond_margin_db(result: Run, margin_db: Sequence[float]) -> float:
-    """Return the least margin over all limits less the margin asked for there [dB]; infinite without limits."""
-    return float(np.min(result.margin_db - np.asarray(margin_db)[:, None]))
 
 
 def output_lines(

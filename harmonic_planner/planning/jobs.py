@@ -168,9 +168,7 @@ def sample(job: Job, attenuation: Attenuation | None) -> Sample:
     middle_hz = (job.low_hz + job.high_hz) / 2
     loss_db = attenuation((moved[:, None] * middle_hz).ravel()).reshape(moved.size, -1)
     carrier_db = loss_db[:, job.carrier]
-    with_leak = with_leakage(
-        loss_db - carrier_db[:, None], carrier_db[:, None], job.leak_db, exponent=job.exponent
-    )
+    with_leak = with_leakage(loss_db - carrier_db[:, None], carrier_db[:, None], job.leak_db, exponent=job.exponent)
     transmission = 10 ** (-with_leak * job.exponent / 20)
     transmission[:, job.carrier] = 1.0
     return Sample(transmission, carrier_db)

@@ -4,11 +4,11 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 
-from harmonic_planner.chain.assemble import ChainArrays, assemble
+from harmonic_planner.chain.assemble import Array, ChainArrays, assemble
 from harmonic_planner.chain.levels import carrier_levels
 from harmonic_planner.model import Phases, Plan, Scenario
 from harmonic_planner.planning.choice import Built
-from harmonic_planner.planning.evaluate import Run, beyond_margin_db, run
+from harmonic_planner.planning.evaluate import Run, beyond_db, run
 from harmonic_planner.planning.jobs import Job, make_jobs, sample
 from harmonic_planner.planning.proposals import NO_ADVICE, Advice, propose
 from harmonic_planner.planning.selfcheck import run_checks
@@ -53,7 +53,7 @@ def make_plan(scenario: Scenario) -> Plan:
             run=run(chain, transmissions),
             other=_run_other_phases(scenario, settled.filters),
             levels=carrier_levels(scenario, [s.carrier_db for s in samples]),
-            advice=_advise(chain, jobs, settled, margins_db),
+            advice=_advise(chain, jobs, settled, transmissions, margins_db),
             checks=run_checks(scenario, chain, jobs, settled, margins_db),
         )
     )
@@ -68,21 +68,24 @@ def _run_other_phases(scenario: Scenario, filters: Sequence[StageFilter]) -> Run
 
 
 def _advise(
-    chain: ChainArrays, jobs: Sequence[Job], settled: Settled, margins_db: Sequence[float]
+    chain: ChainArrays,
+    jobs: Sequence[Job],
+    settled: Settled,
+    transmissions: Sequence[Array],
+    margins_db: Sequence[float],
 ) -> tuple[Advice, ...]:
     """Propose changes for every planned filter that is not ok, each run through the whole chain."""
 
-    def beyond_db(index: int, built: Built) -> float:
-        changed = list(settled.filters)
-        changed[index] = from_built(jobs[index], built)
-        runs = [sample(job, f.attenuation).transmission for job, f in zip(jobs, changed, strict=True)]
-        return beyond_margin_db(run(chain, runs), margins_db)
+    def beyond(index: int, built: Built) -> float:
+        changed = list(transmissions)
+        changed[index] = sample(jobs[index], from_built(jobs[index], built).attenuation).transmission
+        return beyond_db(chain, changed, margins_db)
 
     advice = []
     for job, stage_filter, required_db in zip(jobs, settled.filters, settled.needed.required_db, strict=True):
         built, choice = stage_filter.built, stage_filter.choice
         if stage_filter.source != "planned" or built is None or choice is None:
             advice.append(NO_ADVICE)
-            continue
-        advice.append(propose(job, built, choice, required_db, beyond_db))
+        else:
+            advice.append(propose(job, built, choice, required_db, beyond))
     return tuple(advice)

@@ -52,18 +52,18 @@ def propose(job: Job, chosen: Built, choice: Choice, required_db: Array, margin:
     """
     if chosen.verdict == "ok":
         return NO_ADVICE
-    kept: dict[str, tuple[Built, float]] = {}
+    kept: dict[tuple[bool, bool, bool], tuple[Built, float]] = {}
     for built in _alternatives(job, chosen, choice, required_db):
         if built.strain >= chosen.strain:
             continue
         beyond_db = margin(job.index, built)
         if beyond_db < 0:
             continue
-        key = _change(chosen, built)
-        if key not in kept or built.strain < kept[key][0].strain:
-            kept[key] = (built, beyond_db)
-    ranked = sorted(kept.items(), key=lambda item: (*item[1][0].strain, item[1][0].prototype.order, item[1][0].midband_db))
-    proposals = tuple(_proposal(job, change, *found) for change, found in ranked[:_MOST])
+        kind = _kind(chosen, built)
+        if kind not in kept or _price(built) < _price(kept[kind][0]):
+            kept[kind] = (built, beyond_db)
+    ranked = sorted(kept.values(), key=lambda found: _price(found[0]))
+    proposals = tuple(_proposal(job, _change(chosen, found[0]), *found) for found in ranked[:_MOST])
     if any(p.buildable for p in proposals):
         return Advice(proposals, "")
     return Advice(proposals, _none_helps(job, chosen, [b for b, _ in kept.values()]))
@@ -95,6 +95,21 @@ def _worth_trying(choice: Choice, chosen: Built) -> Iterator[WindowResult]:
     for result in choice.results:
         if result.feasible and result.prototype.order >= chosen.prototype.order:
             yield result
+
+
+def _kind(old: Built, new: Built) -> tuple[bool, bool, bool]:
+    """Return what differs: order, family, topology; one proposal of a kind is shown."""
+    return (
+        new.prototype.order != old.prototype.order,
+        new.prototype.family != old.prototype.family,
+        new.topology != old.topology,
+    )
+
+
+def _price(built: Built) -> tuple[float, ...]:
+    """Return what a proposal is ranked by: swamped parts, resonators, marginal parts, loss."""
+    swamped, marginal = built.strain
+    return swamped, built.prototype.order, marginal, built.midband_db
 
 
 def _change(old: Built, new: Built) -> str:
@@ -138,7 +153,7 @@ def _none_helps(job: Job, chosen: Built, improved: list[Built]) -> str:
     best = min([chosen, *improved], key=lambda b: b.strain)
     worst = _worst(best.elements)
     return (
-        f"no ladder that keeps every limit can be built from {job.kit.name} at {job.centre_hz / 1e6:.5g} MHz; the best, "
-        f"order {best.prototype.order} at {best.bandwidth:.1%}, still has {sum(e.verdict == 'swamped' for e in best.elements)} "
-        f"swamped parts ({worst.ref}: {worst.reason})"
+        f"no ladder that keeps every limit can be built from {job.kit.name} at {job.centre_hz / 1e6:.5g} MHz; "
+        f"the best, order {best.prototype.order} at {best.bandwidth:.1%}, still has {best.strain[0]} swamped parts "
+        f"({worst.ref}: {worst.reason})"
     )

@@ -6,6 +6,7 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
+from numpy.typing import NDArray
 
 from harmonic_planner.chain.assemble import Array, ChainArrays
 from harmonic_planner.chain.budget import with_margin, worst_excess
@@ -83,7 +84,7 @@ def check_prototypes(jobs: Sequence[Job], filters: Sequence[Built | None], needi
     return Check(worst < _PROTOTYPE_DB, f"lossless ladders against the prototypes: {worst:.1e} dB off at most")
 
 
-def check_requirement(chain: ChainArrays, required_db: Sequence[Array], out_of_reach: Array) -> Check:
+def check_requirement(chain: ChainArrays, required_db: Sequence[Array], out_of_reach: NDArray[np.bool_]) -> Check:
     """Run the chain with exactly the required rejections: every limit within reach must hold, margin included."""
     over = float(np.max(np.where(out_of_reach, 0.0, worst_excess(chain, required_db)), initial=0.0))
     over_db = float(chain.to_db(over)) if over > 0 else -np.inf

@@ -14,7 +14,7 @@ from harmonic_planner.filters.windows import least_order
 from harmonic_planner.model import GivenFilter
 from harmonic_planner.planning.candidates import Offer, offer
 from harmonic_planner.planning.choice import buildable_prototypes, look
-from harmonic_planner.planning.evaluate import beyond_margin_db, run
+from harmonic_planner.planning.evaluate import beyond_db
 from harmonic_planner.planning.jobs import Job, sample
 from harmonic_planner.planning.stage_filter import StageFilter, given, held_to, planned, unfiltered
 
@@ -72,8 +72,8 @@ def settle(chain: ChainArrays, jobs: Sequence[Job], margins_db: Sequence[float])
                 filters.append(unfiltered(job, wanted=True, reason=_no_carrier(job)))
             else:
                 filters.append(planned(job, offered.filters[order][pick], required_db))
-        result = run(chain, [sample(job, f.attenuation).transmission for job, f in zip(jobs, filters, strict=True)])
-        short_db = -beyond_margin_db(result, margins_db)
+        transmissions = [sample(job, f.attenuation).transmission for job, f in zip(jobs, filters, strict=True)]
+        short_db = -beyond_db(chain, transmissions, margins_db)
         if short_db <= 0 or not chosen.met or spec.out_of_reach.any() or not all(f.meets for f in filters):
             break
         drawn_in_db += short_db + _HEADROOM_DB

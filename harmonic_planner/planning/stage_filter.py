@@ -60,7 +60,9 @@ def unfiltered(job: Job, *, wanted: bool = False, reason: str = "") -> StageFilt
     return StageFilter("planned" if wanted else "none", no_filter(job), meets=not wanted, reason=reason)
 
 
-def from_built(job: Job, built: Built, *, source: FilterSource = "planned", unloaded_q: float | None = None) -> StageFilter:
+def from_built(
+    job: Job, built: Built, *, source: FilterSource = "planned", unloaded_q: float | None = None
+) -> StageFilter:
     """Return a circuit in its place, with the kit's losses or one unloaded Q."""
     return StageFilter(
         source,

@@ -7,7 +7,7 @@ from collections.abc import Sequence
 import numpy as np
 
 from harmonic_planner.chain.assemble import ChainArrays
-from harmonic_planner.model import Scenario, StagePlan
+from harmonic_planner.model import ElementReport, Scenario, StagePlan
 from harmonic_planner.planning.evaluate import Run
 from harmonic_planner.planning.settle import Settled
 
@@ -40,8 +40,8 @@ def sentence(
     count = sum(s.filter.source == "planned" for s in stages)
     if met:
         limits = (
-            f"every line is within its limit; the closest, line {line} {where}, has {run.margin_db[to, k]:.1f} dB of margin"
-            f" with {resonators} resonators in {count} filters"
+            f"every line is within its limit; the closest, line {line} {where}, has {run.margin_db[to, k]:.1f} dB of "
+            f"margin with {resonators} resonators in {count} filters"
         )
     else:
         limits = f"line {line} {where} has a margin of {run.margin_db[to, k]:.1f} dB" + _shortfall(
@@ -79,16 +79,18 @@ def _unbuildable(stages: Sequence[StagePlan]) -> str:
     """Name the stages whose parts strays would swamp, and what would help."""
     words = []
     for s in stages:
-        swamped = [e for e in s.filter.elements if e.verdict == "swamped"]
         if s.filter.source != "planned":
             continue
+        swamped = [e for e in s.filter.elements if e.verdict == "swamped"]
+        helpful = next((p for p in s.filter.proposals if p.buildable), None)
         if s.filter.order is None:
             words.append(f"{s.name} has no filter")
         elif swamped:
-            helpful = next((p for p in s.filter.proposals if p.buildable), None)
-            remedy = f"would help: {helpful.change}" if helpful is not None else "no ladder helps"
-            words.append(
-                f"{s.name} cannot be built ({swamped[0].ref}: {swamped[0].reason}; {len(swamped)} of "
-                f"{len(s.filter.elements)} parts swamped; {remedy})"
-            )
-    return ", ".join(words)
+            remedy = f"{helpful.change} would help" if helpful is not None else "no ladder helps"
+            words.append(f"{s.name} ({swamped[0].ref} {_first_reason(swamped[0])}; {remedy})")
+    return "strays or missing values keep these filters from being built: " + ", ".join(words)
+
+
+def _first_reason(element: ElementReport) -> str:
+    """Return the gravest of an element's reasons."""
+    return element.reason.split(";")[0]

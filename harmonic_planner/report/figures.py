@@ -15,6 +15,7 @@ from matplotlib.axes import Axes
 from matplotlib.backends.backend_agg import FigureCanvasAgg
 from matplotlib.figure import Figure
 from matplotlib.patches import Rectangle
+from matplotlib.ticker import LogLocator, NullFormatter
 
 from harmonic_planner.export.names import stage_stem
 from harmonic_planner.model import Plan
@@ -31,7 +32,6 @@ _STYLE: Mapping[Any, Mapping[str, Any]] = {  # matplotlib types its group names,
     "legend": {"fontsize": 8.0, "frameon": False},
     "text": {"parse_math": False},
 }
-_MOST_NAMES = 24
 
 
 def draw_comb(comb: Comb, axes: Axes) -> None:
@@ -51,15 +51,13 @@ def draw_comb(comb: Comb, axes: Axes) -> None:
     axes.set_xlim(0, comb.x_max)
     axes.set_ylim(floor, comb.y_max_dbc)
     _stems(axes, comb.before, floor, color=ORANGE, marker="o", filled=False, label="before the filter")
-    _stems(
-        axes, comb.after, floor, color=BLUE, marker="s", filled=True, label="behind the filter, at the stage's output"
-    )
+    _stems(axes, comb.after, floor, color=BLUE, marker="s", filled=True, label="after the filter (stage output)")
     _bars(axes, comb.allowed, color=GREEN, marker="v", label="allowed by the budget")
     _bars(axes, comb.limits, color=BLACK, marker="_", label="output limit")
     _stems(
         axes, (comb.carrier,), floor, color=BLACK, marker="D", filled=True, label=f"carrier (line {comb.carrier.name})"
     )
-    for mark in sorted(comb.before, key=lambda mark: -mark.level_dbc)[:_MOST_NAMES]:
+    for mark in comb.named:
         _name(axes, mark.name, mark.middle, mark.level_dbc)
     _legend(axes)
 
@@ -79,6 +77,9 @@ def draw_response(response: Response, axes: Axes) -> None:
     axes.set_ylabel("Attenuation relative to midband (dB)")
     if response.logarithmic:
         axes.set_xscale("log")
+        axes.xaxis.set_major_locator(LogLocator(subs=(1.0, 2.0, 5.0)))
+        axes.xaxis.set_major_formatter("{x:g}")
+        axes.xaxis.set_minor_formatter(NullFormatter())
     axes.set_xlim(*response.x_range)
     axes.set_ylim(response.y_max_db, -5.0)
     if response.frequency:
@@ -183,7 +184,7 @@ def _stems(
         levels,
         linestyle="none",
         marker=marker,
-        markersize=4.5,
+        markersize=4.5 if filled else 7.0,
         color=color,
         markerfacecolor=color if filled else "white",
         label=label,

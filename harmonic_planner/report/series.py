@@ -5,9 +5,10 @@ from dataclasses import dataclass
 
 from harmonic_planner.export.nodes import line_frequency_hz
 from harmonic_planner.model import LineLevel, Plan, StagePlan
-from harmonic_planner.report.text import decibels, filter_name, frequency_scale, printable, quantity
+from harmonic_planner.report.text import decibels, frequency_scale, printable, quantity
 
 _LEAST_FLOOR_DBC = -80.0
+_MOST_NAMES = 24
 _LOG_RATIO = 12.0
 """A response over a wider ratio of frequencies than this is drawn over a logarithmic axis."""
 
@@ -41,6 +42,8 @@ class Comb:
     """What the budget allows behind the filter: level before it less the rejection required."""
     limits: tuple[Mark, ...]
     """The limit at the chain's output; only at the last stage."""
+    named: tuple[Mark, ...]
+    """The strongest lines, each at the higher of its two levels, to be marked with their harmonic number."""
     x_max: float
     y_min_dbc: float
     y_max_dbc: float
@@ -117,15 +120,18 @@ def comb(plan: Plan, index: int) -> Comb:
         )
 
     low, high = stage.frequency_hz
+    before_marks, after_marks = marks(stage.device_lines), marks(stage.output_lines)
+    highest = {mark.name: mark for mark in sorted((*before_marks, *after_marks), key=lambda mark: mark.level_dbc)}
     tops = [level.level_dbc for level in seen if math.isfinite(level.level_dbc)]
     return Comb(
         title=f"{_heading(index, stage)}: lines before and after the filter",
         unit=unit,
         carrier=Mark(str(stage.line), low / scale, high / scale, 0.0),
-        before=marks(stage.device_lines),
-        after=marks(stage.output_lines),
+        before=before_marks,
+        after=after_marks,
         allowed=marks(allowed),
         limits=marks(limits),
+        named=tuple(sorted(highest.values(), key=lambda mark: -mark.level_dbc)[:_MOST_NAMES]),
         x_max=1.04 * highest_hz / scale,
         y_min_dbc=floor,
         y_max_dbc=10.0 * math.ceil(max([0.0, *tops]) / 10.0 + 1.0),
@@ -193,7 +199,7 @@ def _filter_note(stage: StagePlan) -> str:
     if made.centre_hz is None or made.bandwidth_hz is None:
         return f"No filter: {printable(made.reason)}" if made.reason else "No filter"
     return (
-        f"{filter_name(made.family, made.order)}, {made.topology or 'prototype'}, "
+        f"{(made.family or '').capitalize()} of order {made.order}, {made.topology or 'prototype'}, "
         f"{quantity(made.bandwidth_hz, 'Hz', 3)} at {quantity(made.centre_hz, 'Hz')}, "
         f"midband loss {decibels(made.loss_db)} dB"
     )

@@ -10,7 +10,17 @@ from rich.text import Text
 
 from harmonic_planner.export.nodes import line_frequency_hz, origins_text
 from harmonic_planner.model import VERDICT_RANK, ElementVerdict, LineLevel, OutputLine, Plan, Proposal, StagePlan
-from harmonic_planner.report.text import decibels, filter_name, line_name, printable, quantity, span
+from harmonic_planner.report.text import (
+    decibels,
+    filter_name,
+    frequency_scale,
+    line_name,
+    number_text,
+    printable,
+    quantity,
+    span,
+    span_of,
+)
 
 WIDTH = 80
 FAINTEST_DBC = -150.0
@@ -20,7 +30,9 @@ _WORST_LINES = 5
 _MOST_FLAGS = 12
 _PROPOSALS_PER_STAGE = 2
 _LEAST_SHARE = 0.1
-_STYLES = {"ok": "green", "marginal": "yellow", "swamped": "bold red", "none found": "bold red"}
+_LONGEST_TOPOLOGY = 13
+"""A longer name wraps, so that the table of stages stays within the width."""
+_STYLES = {"ok": "green", "marginal": "yellow", "swamped": "bold red", "no filter": "bold red"}
 
 
 def console() -> Console:
@@ -104,12 +116,15 @@ def show_lines(plan: Plan, screen: Console) -> None:
         )
 
 
-def _table(*columns: str, right: Iterable[str] = ()) -> Table:
-    """Make an empty table with a rule under its heads."""
-    table = Table(box=box.SIMPLE_HEAD, show_edge=False, pad_edge=False, padding=(0, 1, 0, 0), header_style="bold")
+def _table(*columns: str, right: Iterable[str] = (), fixed: Iterable[str] = (), gap: int = 2) -> Table:
+    """Make an empty table with a rule under its heads; numbers stand to the right, fixed columns never wrap."""
+    table = Table(box=box.SIMPLE_HEAD, show_edge=False, pad_edge=False, padding=(0, gap - 1, 0, 0), header_style="bold")
     aligned = set(right)
+    unbroken = aligned | set(fixed)
     for column in columns:
-        table.add_column(column, justify="right" if column in aligned else "left", overflow="fold", vertical="bottom")
+        table.add_column(
+            column, justify="right" if column in aligned else "left", overflow="fold", no_wrap=column in unbroken
+        )
     return table
 
 
@@ -139,8 +154,16 @@ def _bullet(screen: Console, text: Text) -> None:
 
 def _stage_table(plan: Plan) -> Table:
     """One row per stage."""
-    columns = ("stage", "carrier", "filter", "band\n%", "centre", "topology", "loss\ndB", "margin\ndB", "parts")
-    table = _table(*columns, right=("band\n%", "loss\ndB", "margin\ndB"))
+    scale, unit = frequency_scale(min(stage.frequency_hz[1] for stage in plan.stages))
+    carrier, centre = f"carrier\n{unit}", f"centre\n{unit}"
+    longest = max(len(stage.filter.topology or "") for stage in plan.stages)
+    right = (carrier, "band\n%", centre, "loss\ndB", "margin\ndB")
+    table = _table(
+        *("stage", carrier, "filter", "band\n%", centre, "topology", "loss\ndB", "margin\ndB", "parts"),
+        right=right,
+        fixed=("filter", "parts", "topology") if longest <= _LONGEST_TOPOLOGY else ("filter", "parts"),
+        gap=1,
+    )
     for number, stage in enumerate(plan.stages, start=1):
         made = stage.filter
         band = made.bandwidth_hz / made.centre_hz if made.bandwidth_hz and made.centre_hz else None
@@ -148,10 +171,10 @@ def _stage_table(plan: Plan) -> Table:
         parts = _parts(stage)
         table.add_row(
             Text(f"{number} {printable(stage.name)}"),
-            span(stage.frequency_hz, 4),
+            span_of(stage.frequency_hz, scale),
             filter_name(made.family, made.order),
             "–" if band is None else f"{100 * band:.1f}",
-            "–" if made.centre_hz is None else quantity(made.centre_hz, "Hz"),
+            "–" if made.centre_hz is None else number_text(made.centre_hz / scale),
             made.topology or "–",
             decibels(made.loss_db),
             decibels(min(margins, default=None), signed=True),
@@ -166,7 +189,7 @@ def _parts(stage: StagePlan) -> str:
     if made.source == "none":
         return "–"
     if made.family is None:
-        return "none found"
+        return "no filter"
     if not made.elements:
         return "prototype"
     worst: ElementVerdict = max((part.verdict for part in made.elements), key=lambda verdict: VERDICT_RANK[verdict])
@@ -175,7 +198,11 @@ def _parts(stage: StagePlan) -> str:
 
 def _worst_lines_table(plan: Plan) -> Table:
     """List the output lines that come closest to their limit, and where each comes from."""
-    table = _table("line", "frequency", "dBc", "limit", "margin\ndB", "cause", right=("dBc", "limit", "margin\ndB"))
+    table = _table(
+        *("line", "frequency", "dBc", "limit", "margin\ndB", "cause"),
+        right=("dBc", "limit", "margin\ndB"),
+        fixed=("line", "frequency"),
+    )
     limited = [line for line in plan.output.lines if line.margin_db is not None]
     for line in sorted(limited, key=_margin)[:_WORST_LINES]:
         main = origins_text(line.origins, at_least=_LEAST_SHARE) or origins_text(line.origins)
@@ -201,7 +228,7 @@ def _flags(plan: Plan, screen: Console) -> None:
     if not flagged:
         return
     flagged.sort(key=lambda pair: -VERDICT_RANK[pair[1].verdict])
-    table = _table("stage", "part", "value", "verdict", "reason")
+    table = _table("stage", "part", "value", "verdict", "reason", fixed=("part", "value", "verdict"))
     for stage, part in flagged[:_MOST_FLAGS]:
         table.add_row(
             Text(printable(stage.name)),
@@ -223,26 +250,25 @@ def _proposals(plan: Plan, screen: Console) -> None:
     screen.print()
     screen.print(Text("What would help (each designed anew and run through the chain)", style="bold"))
     for stage in stages:
-        for proposal in stage.filter.proposals[:_PROPOSALS_PER_STAGE]:
-            _bullet(screen, _proposal_text(stage, proposal))
-        left = len(stage.filter.proposals) - _PROPOSALS_PER_STAGE
-        if left > 0:
-            _bullet(screen, Text(f"{printable(stage.name)}: {left} more in plan.json"))
+        name, every = printable(stage.name), stage.filter.proposals
+        for proposal in [proposal for proposal in every if proposal.buildable][:_PROPOSALS_PER_STAGE]:
+            _bullet(screen, _proposal_text(name, proposal))
         if stage.filter.proposals_note:
-            _bullet(screen, Text(f"{printable(stage.name)}: {printable(stage.filter.proposals_note)}"))
+            _bullet(screen, Text(f"{name}: {printable(stage.filter.proposals_note)}"))
+        elif not any(proposal.buildable for proposal in every):
+            _bullet(screen, Text(f"{name}: nothing that was tried can be built; plan.json says what was"))
 
 
-def _proposal_text(stage: StagePlan, proposal: Proposal) -> Text:
+def _proposal_text(stage_name: str, proposal: Proposal) -> Text:
     """Say one proposal with what it buys and costs."""
     text = Text(
-        f"{printable(stage.name)}: {printable(proposal.change)}: {filter_name(proposal.family, proposal.order)} "
-        f"{proposal.topology}, {100 * proposal.bandwidth_hz / proposal.centre_hz:.1f} % at "
-        f"{quantity(proposal.centre_hz, 'Hz')}; worst part "
+        f"{stage_name}: {printable(proposal.change)}: {filter_name(proposal.family, proposal.order)} "
+        f"{proposal.topology} at {quantity(proposal.centre_hz, 'Hz')}, worst part "
     )
     text.append(proposal.worst_verdict, style=_STYLES[proposal.worst_verdict])
-    named = f" ({printable(proposal.worst_element)})" if proposal.worst_element else ""
-    margin = decibels(proposal.worst_margin_db, signed=True)
-    text.append(f"{named}, least output margin {margin} dB, loss {decibels(proposal.loss_db)} dB")
+    part = printable(proposal.worst_element).partition(":")[0]
+    text.append(f" ({part})" if part else "")
+    text.append(f", least output margin {decibels(proposal.worst_margin_db, signed=True)} dB")
     return text
 
 
@@ -258,7 +284,7 @@ def _comb_table(plan: Plan, screen: Console, columns: Sequence[tuple[str, Sequen
     """Show the levels of every line at a stage's nodes side by side, and count those too faint to matter."""
     levels = [{level.line: level.level_dbc for level in node} for _, node in columns]
     heads = [head for head, _ in columns]
-    table = _table("line", "frequency", *heads, right=("line", *heads))
+    table = _table("line", "frequency", *heads, right=("line", *heads), fixed=("frequency",))
     every = sorted({line for node in levels for line in node})
     strong = [line for line in every if max(node.get(line, -math.inf) for node in levels) >= FAINTEST_DBC]
     for line in strong:

@@ -51,11 +51,31 @@ def quantity(value: float, unit: str, digits: int = 4) -> str:
     smallest = 1.0 if unit == "Hz" else 1e-12
     usable = [pair for pair in _PREFIXES if pair[0] >= smallest]
     scale, prefix = next((pair for pair in usable if abs(value) >= pair[0]), usable[-1])
-    return f"{_digits(value / scale, digits)} {prefix}{unit}"
+    return f"{number_text(value / scale, digits)} {prefix}{unit}"
+
+
+def number_text(value: float, digits: int = 4) -> str:
+    """Round to significant digits, without an exponent and without trailing zeros.
+
+    Parameters
+    ----------
+    value : float
+        A finite number.
+    digits : int
+        Significant digits.
+
+    Returns
+    -------
+    str
+        For instance ``61.2``.
+    """
+    decimals = max(0, digits - 1 - math.floor(math.log10(abs(value)))) if value else 0
+    text = f"{value:.{decimals}f}"
+    return text.rstrip("0").rstrip(".") if "." in text else text
 
 
 def span(frequency_hz: tuple[float, float], digits: int = 4) -> str:
-    """Write a line's span.
+    """Write a line's span with its unit.
 
     Parameters
     ----------
@@ -69,11 +89,29 @@ def span(frequency_hz: tuple[float, float], digits: int = 4) -> str:
     str
         For instance ``59.4–60.6 MHz``, or one frequency where both ends are the same.
     """
-    low, high = frequency_hz
-    if low == high:
-        return quantity(high, "Hz", digits)
-    scale, unit = frequency_scale(high)
-    return f"{_digits(low / scale, digits)}–{_digits(high / scale, digits)} {unit}"
+    scale, unit = frequency_scale(frequency_hz[1])
+    return f"{span_of(frequency_hz, scale, digits)} {unit}"
+
+
+def span_of(frequency_hz: tuple[float, float], scale: float, digits: int = 4) -> str:
+    """Write a line's span in a unit that stands elsewhere.
+
+    Parameters
+    ----------
+    frequency_hz : tuple of float
+        Lowest and highest frequency [Hz].
+    scale : float
+        The unit [Hz].
+    digits : int
+        Significant digits of each end.
+
+    Returns
+    -------
+    str
+        For instance ``59.4–60.6``, or one number where both ends are the same.
+    """
+    low, high = (number_text(edge / scale, digits) for edge in frequency_hz)
+    return high if low == high else f"{low}–{high}"
 
 
 def frequency_scale(highest_hz: float) -> tuple[float, str]:
@@ -138,10 +176,3 @@ def filter_name(family: str | None, order: int | None) -> str:
     if family is None or order is None:
         return "none"
     return f"{ {'butterworth': 'Butter', 'chebyshev': 'Cheb'}.get(family, family) } {order}"
-
-
-def _digits(value: float, digits: int) -> str:
-    """Round to significant digits without an exponent and without trailing zeros."""
-    decimals = max(0, digits - 1 - math.floor(math.log10(abs(value)))) if value else 0
-    text = f"{value:.{decimals}f}"
-    return text.rstrip("0").rstrip(".") if "." in text else text

@@ -4,10 +4,11 @@ import math
 
 import numpy as np
 import pytest
-from hypothesis import given
+from hypothesis import example, given
 from hypothesis import strategies as st
 from numpy.polynomial import chebyshev
 from scipy.integrate import quad
+from scipy.special import ive
 
 from harmonic_planner.model import Device, PlannerError
 from harmonic_planner.physics.limiter import ConvergenceError, limiter_bias, limiter_coefficients
@@ -61,8 +62,8 @@ def test_clipped_curvature_is_the_change_of_slope_with_a_shift(angle_deg):
     for m in range(9):
         slopes = []
         for shift in (-step, step):
-            moved = math.acos(math.cos(theta) - shift)
-            slopes.append(by_quadrature(lambda x, c=math.cos(moved): float(x > c), m, [moved]))
+            corner = math.cos(theta) - shift
+            slopes.append(by_quadrature(lambda x, c=corner: float(x > c), m, [math.acos(corner)]))
         assert s.H[m] == pytest.approx((slopes[1] - slopes[0]) / (2 * step), rel=1e-4, abs=1e-4)
 
 
@@ -84,21 +85,21 @@ def test_balanced_coefficients_equal_quadrature(kind, sign, angle_deg):
 
 @pytest.mark.parametrize("steepness, bias", [(0.3, 0.0), (2.0, 0.7), (10.0, 0.0), (10.0, 4.0), (60.0, -20.0)])
 def test_limiter_coefficients_equal_quadrature(steepness, bias):
-    """independent: numerical integration, broken where the limiter turns over."""
+    """independent: Gauss–Legendre quadrature in 500 panels."""
     s = limiter_spectrum(steepness=steepness, bias=bias, m_max=7)
-    turn = [math.acos(-bias / steepness)] if abs(bias) < steepness else []
-    slope_scale, bend_scale = np.max(np.abs(s.G)), np.max(np.abs(s.H))
-    for m in range(8):
-        f = by_quadrature(lambda x: math.tanh(steepness * x + bias), m, turn)
-        g = by_quadrature(lambda x: steepness / math.cosh(steepness * x + bias) ** 2, m, turn)
-        h = by_quadrature(
-            lambda x: -2 * steepness**2 * math.tanh(steepness * x + bias) / math.cosh(steepness * x + bias) ** 2,
-            m,
-            turn,
-        )
-        assert s.F[m] == pytest.approx(f, abs=1e-12)
-        assert s.G[m] == pytest.approx(g, abs=1e-11 * slope_scale)
-        assert s.H[m] == pytest.approx(h, abs=1e-10 * bend_scale)
+    nodes, weights = np.polynomial.legendre.leggauss(20)
+    edges = np.linspace(0, np.pi, 501)
+    phase = (edges[:-1, np.newaxis] + np.pi / 500 * (nodes + 1) / 2).ravel()
+    weight = np.tile(weights / 1000, 500)
+    u = steepness * np.cos(phase) + bias
+    shapes = {
+        "F": np.tanh(u),
+        "G": steepness / np.cosh(u) ** 2,
+        "H": -2 * steepness**2 * np.tanh(u) / np.cosh(u) ** 2,
+    }
+    for name, shape in shapes.items():
+        expected = [np.sum(weight * shape * np.cos(m * phase)) for m in range(8)]
+        assert getattr(s, name) == pytest.approx(expected, abs=1e-12 * np.sum(weight * np.abs(shape)))
 
 
 @pytest.mark.parametrize("times", range(1, 9))
@@ -135,10 +136,12 @@ def test_slope_lines_differ_by_the_wanted_line(any_device, times):
     assert_identities(spectrum(any_device, times, times + 1), times)
 
 
-@given(steepness=st.floats(0.05, 1000), bias_share=st.floats(-1.2, 1.2), times=st.integers(1, 12))
+@given(steepness=st.floats(0.05, 100), bias_share=st.floats(-1, 1), times=st.integers(1, 12))
+@example(steepness=1000.0, bias_share=0.4, times=5)
+@example(steepness=1000.0, bias_share=-1.0, times=2)
 def test_slope_lines_differ_by_the_wanted_line_in_a_limiter(steepness, bias_share, times):
     """independent: integration by parts, for every steepness and bias."""
-    assert_identities(limiter_spectrum(steepness=steepness, bias=bias_share * steepness, m_max=times + 1), times)
+    assert_identities(limiter_spectrum(steepness=steepness, bias=bias_share * (steepness + 3), m_max=times + 1), times)
 
 
 @given(any_device=ANY_DEVICE, times=st.integers(1, 6), phase=st.floats(0, math.pi))
@@ -176,7 +179,8 @@ def test_no_balance_is_a_single_ended_device():
     assert second_half(0.0) == 0
     assert second_half(math.inf) == 1
     alone = spectrum(device("single-ended", half_angle_rad=1.0), 2, 9)
-    assert spectrum(device("push-pull", half_angle_rad=1.0, balance_db=0.0), 2, 9).F == pytest.approx(alone.F)
+    unbalanced = spectrum(device("push-pull", half_angle_rad=1.0, balance_db=0.0), 2, 9).F
+    assert unbalanced == pytest.approx(alone.F)
 
 
 @pytest.mark.parametrize("balance_db", [6.0, 25.0, 40.0])
@@ -214,7 +218,7 @@ def test_limiter_without_line_2_or_with_even_factor_has_no_bias():
     assert limiter_bias(steepness=10.0, line_2_dbc=-400.0, times=3, weakest_db=40.0) == pytest.approx(0, abs=1e-15)
 
 
-@pytest.mark.parametrize("level_dbc, times, allowed", [(0.0, 1, "up to -0.73 dBc"), (60.0, 3, "up to 27.12 dBc")])
+@pytest.mark.parametrize("level_dbc, times, allowed", [(0.0, 1, "up to -0.67 dBc"), (60.0, 3, "up to 27.14 dBc")])
 def test_unreachable_line_2_is_refused(level_dbc, times, allowed):
     """regression, unconfirmed: the highest level; published nowhere, but see the next test for its limit at N = 1."""
     with pytest.raises(PlannerError, match=rf"device\.lines: line 2 = {level_dbc:g} dBc .*limiter ×{times}.*{allowed}"):
@@ -223,8 +227,6 @@ def test_unreachable_line_2_is_refused(level_dbc, times, allowed):
 
 def test_highest_line_2_of_a_limiter_without_multiplication_is_that_of_a_pulse():
     """independent: for b far beyond g the limiter is exponential, 1 − 2·e^(−2(gx + b)): F_2/F_1 = I_2(2g)/I_1(2g)."""
-    from scipy.special import ive
-
     limit_dbc = 20 * math.log10(ive(2, 20.0) / ive(1, 20.0))
     assert limiter_bias(steepness=10.0, line_2_dbc=limit_dbc - 0.05, times=1, weakest_db=40.0) > 9
     with pytest.raises(PlannerError):
@@ -255,7 +257,7 @@ def test_factor_below_one_is_refused():
 
 
 def test_transform_that_does_not_stand_still_says_so():
-    with pytest.raises(ConvergenceError, match=r"device\.steepness = 1e\+07") as caught:
-        limiter_coefficients(steepness=1e7, bias=0.0, m_max=5)
-    assert caught.value.points >= 2**20
+    with pytest.raises(ConvergenceError, match=r"device\.steepness = 100000.*allowed is up to 1000") as caught:
+        limiter_coefficients(steepness=1e5, bias=0.0, m_max=5)
+    assert caught.value.points == 2**20
     assert caught.value.change > 1e-9

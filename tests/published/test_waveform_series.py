@@ -62,7 +62,7 @@ def test_square_wave_series():
     """published: a square wave has 4/(πk) on odd k. A limiter comes near it as 1/g², so the limit is extrapolated."""
     k = np.arange(1, 16, 2)
     square = 4 / (math.pi * k) * (-1.0) ** ((k - 1) // 2)
-    coarse, fine = (2 * limiter_spectrum(steepness=g, bias=0.0, m_max=15).F[1::2] for g in (250.0, 500.0))
+    coarse, fine = (2 * limiter_spectrum(steepness=g, bias=0.0, m_max=15).F[1::2] for g in (500.0, 1000.0))
     assert (coarse - square) / (fine - square) == pytest.approx(4, abs=0.02)
     assert (4 * fine - coarse) / 3 == pytest.approx(square, abs=1e-8)
 
@@ -93,7 +93,7 @@ def test_page_limit_holds_for_every_clipped_resistance():
         current = np.maximum(np.cos(phase) + harmonic - corner, 0.0)
         taken = np.mean(current * np.cos(phase))
         given_back = -np.mean(current * harmonic)
-        assert taken > 0
-        assert given_back / taken <= 1 / times**2 + 1e-9
-        best = max(best, times**2 * given_back / taken)
+        assert times**2 * given_back <= taken + 1e-9
+        if taken > 0.01:
+            best = max(best, times**2 * given_back / taken)
     assert best > 0.2  # the samples do reach into the region that the limit bounds
