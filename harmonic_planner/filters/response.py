@@ -1,6 +1,6 @@
 """Response of a circuit between its source and load: ladder recursion, and a nodal solution as a second method.
 
-Losses are of the elements; strays are not in the response (see `flags`).
+Losses are of the elements; strays are not in this response: `built_response` has them.
 
 References
 ----------
@@ -11,6 +11,7 @@ References
 from __future__ import annotations
 
 import math
+from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
@@ -44,6 +45,25 @@ class Response:
     def return_loss_db(self) -> Floats:
         """Return loss, −20 log10 |S11| [dB]; infinite where nothing is reflected."""
         return attenuation_db(self.s11)
+
+    @property
+    def dissipation(self) -> Floats:
+        """Share of the available power that stays in the circuit, 1 − |S11|² − |S21|²."""
+        return np.asarray(1.0 - np.abs(self.s11) ** 2 - np.abs(self.s21) ** 2)
+
+    @property
+    def group_delay_s(self) -> Floats:
+        """Group delay −d(arg S21)/dω [s], by central differences: the phase must turn less than π from point to point.
+
+        Raises
+        ------
+        PlannerError
+            For fewer than three frequencies, or frequencies that do not ascend.
+        """
+        if self.frequency_hz.size < 3 or not np.all(np.diff(self.frequency_hz) > 0):
+            raise PlannerError("a group delay needs at least three frequencies, ascending")
+        phase = np.unwrap(np.angle(self.s21))
+        return np.asarray(-np.gradient(phase, 2 * np.pi * self.frequency_hz, edge_order=2))
 
 
 def attenuation_db(transmission: ArrayLike) -> Floats:
@@ -87,7 +107,7 @@ def sweep(
     the open-circuit source voltage then gives S21 = 2 sqrt(R_S/R_L) V_L/V_S. No division by the load side's
     immittance occurs, so a resonance is no special case.
     """
-    frequency = _frequencies(frequency_hz)
+    frequency = as_frequencies(frequency_hz)
     losses = _Losses(circuit, frequency, kit, unloaded_q)
     voltage = np.ones(frequency.shape, dtype=np.complex128)
     current = np.full(frequency.shape, 1.0 / circuit.load_ohm, dtype=np.complex128)
@@ -137,7 +157,7 @@ def nodal_sweep(
     Solves Y V = I with the source as a Norton current behind its conductance, each frequency by itself. It shares
     with `sweep` the immittance of an element and nothing else, and serves as its check.
     """
-    frequency = _frequencies(frequency_hz)
+    frequency = as_frequencies(frequency_hz)
     for node in circuit.stranded_nodes():
         raise CircuitError(f"{circuit.topology}: node {node} has no path to the input or output")
     losses = _Losses(circuit, frequency, kit, unloaded_q)
@@ -199,10 +219,43 @@ def rejection_db(
     A filter that drifts by d does at f what the undrifted one does at f/(1 + d); losses are taken there too, a
     difference of second order.
     """
+    return rejection_by(
+        lambda frequency: sweep(circuit, frequency, kit=kit, unloaded_q=unloaded_q).attenuation_db,
+        passband_hz=passband_hz,
+        line_low_hz=line_low_hz,
+        line_high_hz=line_high_hz,
+        drift=drift,
+        points=points,
+    )
+
+
+def rejection_by(
+    attenuation: Callable[[Floats], Floats],
+    *,
+    passband_hz: tuple[float, float],
+    line_low_hz: ArrayLike,
+    line_high_hz: ArrayLike,
+    drift: float,
+    points: int = 41,
+) -> Floats:
+    """Return the rejection of each line as `rejection_db` does, of any response.
+
+    Parameters
+    ----------
+    attenuation : callable
+        (frequency,) [Hz] -> (frequency,) [dB].
+    passband_hz, line_low_hz, line_high_hz, drift, points
+        As for `rejection_db`.
+
+    Returns
+    -------
+    ndarray
+        (line,) [dB].
+    """
     low = np.concatenate(([passband_hz[0]], np.atleast_1d(np.asarray(line_low_hz, dtype=np.float64))))
     high = np.concatenate(([passband_hz[1]], np.atleast_1d(np.asarray(line_high_hz, dtype=np.float64))))
     grid = np.geomspace(low / (1 + drift), high / (1 - drift), points)
-    loss = sweep(circuit, grid.ravel(), kit=kit, unloaded_q=unloaded_q).attenuation_db.reshape(grid.shape)
+    loss = attenuation(grid.ravel()).reshape(grid.shape)
     return np.asarray(loss[:, 1:].min(axis=0) - loss[:, 0].max())
 
 
@@ -246,7 +299,8 @@ class _Losses:
         return 1.0 / self.impedance(element)
 
 
-def _frequencies(frequency_hz: ArrayLike) -> Floats:
+def as_frequencies(frequency_hz: ArrayLike) -> Floats:
+    """Return frequencies as a list, (frequency,) [Hz]; PlannerError where one is not finite and above zero."""
     frequency = np.atleast_1d(np.asarray(frequency_hz, dtype=np.float64))
     if frequency.ndim != 1 or not np.all((frequency > 0) & np.isfinite(frequency)):
         raise PlannerError("frequency_hz must be a list of finite frequencies above zero")

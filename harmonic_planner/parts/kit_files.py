@@ -28,6 +28,10 @@ class KitError(PlannerError):
         self.problems = problems
 
 
+CONTINUOUS = "continuous"
+"""Grid of capacitors that can be set to any value of their range."""
+
+
 def _reader(unit: Unit) -> BeforeValidator:
     return BeforeValidator(partial(quantity, unit=unit))
 
@@ -37,6 +41,10 @@ StrayInductance = Annotated[float, _reader("H"), Field(ge=0)]
 Capacitance = Annotated[float, _reader("F"), Field(gt=0)]
 StrayCapacitance = Annotated[float, _reader("F"), Field(ge=0)]
 Frequency = Annotated[float, _reader("Hz"), Field(gt=0)]
+Current = Annotated[float, _reader("A"), Field(gt=0)]
+Voltage = Annotated[float, _reader("V"), Field(gt=0)]
+TemperatureCoefficient = Annotated[float, _reader("ppm/K"), Field(gt=-0.01, lt=0.01)]
+Flag = Annotated[bool, Field(strict=True)]
 Resistance = Annotated[float, _reader("ohm"), Field(ge=0)]
 Tolerance = Annotated[float, _reader("%"), Field(gt=0, lt=1)]
 Share = Annotated[float, _reader("%"), Field(gt=0, le=10)]
@@ -70,7 +78,10 @@ def _read_grid(raw: object, unit: Unit) -> str | tuple[float, ...]:
         values = tuple(quantity(item, unit) for item in raw)
         if all(a < b for a, b in zip((0.0, *values), values, strict=False)):
             return values
-    raise ValueError(f"expected one of {', '.join(SERIES)}, or a list of values in {unit}, above zero and ascending")
+    if raw == CONTINUOUS and unit == "F":
+        return CONTINUOUS
+    named = ", ".join((*SERIES, CONTINUOUS) if unit == "F" else SERIES)
+    raise ValueError(f"expected one of {named}, or a list of values in {unit}, above zero and ascending")
 
 
 class InductorTable(_Ranged):
@@ -87,6 +98,9 @@ class InductorTable(_Ranged):
     self_resonance_inductance: Inductance
     self_resonance_exponent: Exponent = 0.5
     mounting: StrayInductance
+    temperature: TemperatureCoefficient | None = None
+    current: Current | None = None
+    parallel: Flag = False
 
     _grid = field_validator("grid", mode="before")(lambda raw: _read_grid(raw, "H"))
 
@@ -101,6 +115,9 @@ class CapacitorTable(_Ranged):
     esr: Resistance
     esr_frequency: Frequency
     inductance: StrayInductance
+    temperature: TemperatureCoefficient | None = None
+    voltage: Voltage | None = None
+    parallel: Flag = False
 
     _grid = field_validator("grid", mode="before")(lambda raw: _read_grid(raw, "F"))
 
@@ -110,6 +127,7 @@ class BoardTable(_Table):
 
     via: StrayInductance
     pad: StrayCapacitance
+    shared_via: StrayInductance = 0.0
 
 
 class VerdictTable(_Table):
@@ -142,6 +160,7 @@ class KitTable(_Table):
 
     name: Annotated[str, Field(min_length=1)]
     title: str
+    tuned: Flag = False
     inductor: InductorTable
     capacitor: CapacitorTable
     board: BoardTable

@@ -12,7 +12,8 @@ from pathlib import Path
 import numpy as np
 from numpy.typing import NDArray
 
-from harmonic_planner.parts.kit_files import KitError, read_kit_file
+from harmonic_planner.model import PlannerError
+from harmonic_planner.parts.kit_files import CONTINUOUS, KitError, read_kit_file
 from harmonic_planner.parts.preferred import grid_values
 
 FloatOrArray = float | NDArray[np.float64]
@@ -41,6 +42,12 @@ class InductorKit:
     self_resonance_exponent: float
     mounting_h: float
     """Inductance of pads and solder in series with each inductor [H]."""
+    temperature_per_k: float | None = None
+    """Relative change of an inductance per kelvin; None where the kit does not say."""
+    current_a: float | None = None
+    """Rated current of the smaller values, r.m.s. [A]; None where the kit does not say."""
+    parallel: bool = False
+    """Whether two parts in parallel may make one value; inductors side by side couple, so normally not."""
 
     def q(self, frequency_hz: FloatOrArray) -> NDArray[np.float64]:
         """Return the unloaded Q of an inductor.
@@ -85,7 +92,7 @@ class CapacitorKit:
     smallest_f: float
     largest_f: float
     grid: str | tuple[float, ...]
-    """Name of an E series, or the values themselves [F]."""
+    """Name of an E series, the values themselves [F], or ``continuous`` for trimmers."""
     tolerance: float
     dissipation: float
     """tan δ of the dielectric."""
@@ -93,6 +100,12 @@ class CapacitorKit:
     esr_reference_hz: float
     inductance_h: float
     """Of a mounted part, pads and solder included, without a via [H]."""
+    temperature_per_k: float | None = None
+    """Relative change of a capacitance per kelvin; None where the kit does not say."""
+    voltage_v: float | None = None
+    """Rated voltage, peak [V]; None where the kit does not say."""
+    parallel: bool = False
+    """Whether two parts in parallel may make one value."""
 
     def resistance_ohm(self, capacitance_f: FloatOrArray, frequency_hz: FloatOrArray) -> NDArray[np.float64]:
         """Return the series resistance of a capacitor.
@@ -125,8 +138,15 @@ class CapacitorKit:
         total_h = self.inductance_h + extra_h
         return math.inf if total_h == 0 else 1.0 / (2 * math.pi * math.sqrt(total_h * capacitance_f))
 
+    @property
+    def continuous(self) -> bool:
+        """Whether any value of the range can be set."""
+        return self.grid == CONTINUOUS
+
     def values_f(self) -> tuple[float, ...]:
-        """Return every capacitance that can be bought, ascending [F]."""
+        """Return every capacitance that can be bought, ascending [F]; PlannerError where the range is continuous."""
+        if self.continuous:
+            raise PlannerError("a continuous range of capacitors has no list of values")
         return _values(self.grid, self.smallest_f, self.largest_f)
 
 
@@ -138,6 +158,8 @@ class Board:
     """From a shunt part's pad to the ground plane [H]."""
     pad_f: float
     """From one pad to ground [F]."""
+    shared_via_h: float = 0.0
+    """Common to the vias of two or more shunt parts on one node, beyond each part's own [H]."""
 
 
 @dataclass(frozen=True)
@@ -168,6 +190,8 @@ class Kit:
     """Least bandwidth over a resonator's tolerance, filters that nobody tunes."""
     tuned_factor: float
     """Least bandwidth over the drift, filters tuned on the bench."""
+    tuned: bool = False
+    """Whether its capacitors are made to be adjusted on the bench; then every filter of this kit is."""
     basis: Mapping[str, str] = field(default_factory=dict, hash=False)
     """Dotted key of the kit file -> where its value comes from."""
 
@@ -201,7 +225,7 @@ class Kit:
         Parameters
         ----------
         tuned : bool
-            Whether each resonator is adjusted on the bench.
+            Whether each resonator is adjusted on the bench; a kit that is `tuned` always is.
         drift : float
             Common drift of the centre, as a fraction.
 
@@ -210,7 +234,7 @@ class Kit:
         float
             Untuned: a multiple (5 in the shipped kits) of the resonator's tolerance. Tuned: one (3) of the drift.
         """
-        return self.tuned_factor * drift if tuned else self.untuned_factor * self.resonator_tolerance
+        return self.tuned_factor * drift if tuned or self.tuned else self.untuned_factor * self.resonator_tolerance
 
 
 def kit_names() -> tuple[str, ...]:
@@ -270,6 +294,9 @@ def _read(path: Path) -> Kit:
             self_resonance_reference_h=inductor.self_resonance_inductance,
             self_resonance_exponent=inductor.self_resonance_exponent,
             mounting_h=inductor.mounting,
+            temperature_per_k=inductor.temperature,
+            current_a=inductor.current,
+            parallel=inductor.parallel,
         ),
         capacitor=CapacitorKit(
             smallest_f=capacitor.smallest,
@@ -280,8 +307,11 @@ def _read(path: Path) -> Kit:
             esr_reference_ohm=capacitor.esr,
             esr_reference_hz=capacitor.esr_frequency,
             inductance_h=capacitor.inductance,
+            temperature_per_k=capacitor.temperature,
+            voltage_v=capacitor.voltage,
+            parallel=capacitor.parallel,
         ),
-        board=Board(via_h=table.board.via, pad_f=table.board.pad),
+        board=Board(via_h=table.board.via, pad_f=table.board.pad, shared_via_h=table.board.shared_via),
         thresholds=Thresholds(
             stray_ok=verdict.stray_ok,
             stray_marginal=verdict.stray_marginal,
@@ -291,6 +321,7 @@ def _read(path: Path) -> Kit:
         ),
         untuned_factor=table.bandwidth.untuned,
         tuned_factor=table.bandwidth.tuned,
+        tuned=table.tuned,
         basis=basis,
     )
 

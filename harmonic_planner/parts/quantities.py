@@ -7,15 +7,18 @@ from typing import Literal
 
 from quantiphy import QuantiPhyError, Quantity
 
-Unit = Literal["H", "F", "Hz", "ohm", "%"]
+Unit = Literal["H", "F", "Hz", "ohm", "%", "A", "V", "ppm/K"]
 
 EXAMPLES: dict[Unit, str] = {"H": "10 nH", "F": "2.2 pF", "Hz": "250 MHz", "ohm": "0.1 ohm", "%": "5 %"}
+EXAMPLES |= {"A": "0.6 A", "V": "50 V", "ppm/K": "30 ppm/K"}
 _SPELLINGS: dict[Unit, tuple[str, ...]] = {
     "H": ("H",),
     "F": ("F",),
     "Hz": ("Hz",),
     "ohm": ("ohm", "Ohm", "Ω", "Ω"),  # the Greek letter and the ohm sign
     "%": ("%",),
+    "A": ("A",),
+    "V": ("V",),
 }
 _STEPS: dict[str, tuple[tuple[float, str], ...]] = {
     "H": ((1e-3, "mH"), (1e-6, "µH"), (0.0, "nH")),
@@ -33,13 +36,13 @@ def quantity(text: object, unit: Unit) -> float:
     ----------
     text : object
         What stands in the file; only a text such as ``"10 nH"`` is taken.
-    unit : {"H", "F", "Hz", "ohm", "%"}
+    unit : {"H", "F", "Hz", "ohm", "%", "A", "V", "ppm/K"}
         The unit it must have.
 
     Returns
     -------
     float
-        SI value, finite; per cent as a fraction.
+        SI value, finite; per cent as a fraction, ppm/K as a fraction per kelvin.
 
     Raises
     ------
@@ -59,6 +62,8 @@ def quantity(text: object, unit: Unit) -> float:
     expected = f"expected a text with the unit {unit}, such as {EXAMPLES[unit]!r}"
     if not isinstance(text, str):
         raise ValueError(expected)
+    if unit == "ppm/K":
+        return _per_million_per_kelvin(text, expected)
     try:
         parsed = Quantity(text)
     except QuantiPhyError as error:
@@ -69,6 +74,18 @@ def quantity(text: object, unit: Unit) -> float:
     if not math.isfinite(value):
         raise ValueError(f"expected a finite number with the unit {unit}")
     return value / 100 if unit == "%" else value
+
+
+def _per_million_per_kelvin(text: str, expected: str) -> float:
+    """Read ``30 ppm/K``; the first p would be a scale factor to the general reader."""
+    number = text.strip().removesuffix("ppm/K")
+    try:
+        value = float(number) if number != text.strip() else math.nan
+    except ValueError as error:
+        raise ValueError(expected) from error
+    if not math.isfinite(value):
+        raise ValueError(expected)
+    return value * 1e-6
 
 
 def readable(value: float, unit: Literal["H", "F", "Hz"], digits: int = 3) -> str:

@@ -8,7 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from harmonic_planner.chain.assemble import Array, ChainArrays
-from harmonic_planner.chain.propagate import Comb, births, propagate
+from harmonic_planner.chain.propagate import Birth, Comb, births, propagate
 from harmonic_planner.model import Origin, OutputLine, Scenario
 
 FAINTEST_DBC = -200.0
@@ -106,13 +106,13 @@ def output_lines(
         for k in wanted:
             if worst_point[k] == point:
                 parts = [
-                    (b.stage, chain.grid.line(int(j)), float(b.paths[k, j] / leaving[point, k]))
+                    (_birthplace(scenario, b), chain.grid.line(int(j)), float(b.paths[k, j] / leaving[point, k]))
                     for b in found
                     for j in np.flatnonzero(b.paths[k] > _LEAST_SHARE * leaving[point, k])
                 ]
                 origins[k] = tuple(
-                    Origin("source" if stage < 0 else scenario.stages[stage].name, line, share)
-                    for stage, line, share in sorted(parts, key=lambda part: (-part[2], part[0], part[1]))
+                    Origin(place, line, share)
+                    for place, line, share in sorted(parts, key=lambda part: (-part[2], part[0], part[1]))
                 )
     limit_db = chain.to_db(chain.stages[last].limit)
     lines = []
@@ -131,3 +131,11 @@ def output_lines(
             )
         )
     return tuple(lines)
+
+
+def _birthplace(scenario: Scenario, birth: Birth) -> str:
+    """Name where lines are born: the source, a stage's device, or its amplifier."""
+    if birth.stage < 0:
+        return "source"
+    name = scenario.stages[birth.stage].name
+    return f"{name} (amplifier)" if birth.part == "amplifier" else name

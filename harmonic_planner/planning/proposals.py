@@ -15,6 +15,7 @@ from harmonic_planner.planning.jobs import Array, Job
 
 _WIDENING = np.geomspace(1.05, 2.5, 12)
 _MOST = 5
+_WIDER = "wider"
 
 ChainMargin = Callable[[int, Built], float]
 """(stage index, its new filter) -> least output margin beyond the design margin [dB]."""
@@ -122,8 +123,8 @@ def _change(old: Built, new: Built) -> str:
     if new.topology != old.topology:
         words.append(f"{new.topology} instead of {old.topology}")
     if new.bandwidth > 1.02 * old.bandwidth:
-        words.insert(0, "wider")
-    return ", ".join(words) or "same filter, other centre"
+        words.insert(0, _WIDER)
+    return ", ".join(words) or "the same filter at another centre"
 
 
 def _worst(elements: tuple[ElementReport, ...]) -> ElementReport:
@@ -133,7 +134,7 @@ def _worst(elements: tuple[ElementReport, ...]) -> ElementReport:
 def _proposal(job: Job, change: str, built: Built, beyond_db: float) -> Proposal:
     worst = _worst(built.elements)
     return Proposal(
-        change=f"{change}: {built.bandwidth:.1%} bandwidth, {built.midband_db:.1f} dB loss",
+        change=change,
         family=built.prototype.family,
         ripple_db=built.prototype.ripple_db,
         order=built.prototype.order,

@@ -7,12 +7,12 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from harmonic_planner.chain.assemble import ChainArrays
+from harmonic_planner.chain.assemble import Array, ChainArrays
 from harmonic_planner.chain.assign import Candidates, assign
 from harmonic_planner.chain.budget import Rejections, equal_shares, requirement, with_margin
 from harmonic_planner.filters.windows import least_order
 from harmonic_planner.model import GivenFilter
-from harmonic_planner.planning.candidates import Offer, offer
+from harmonic_planner.planning.candidates import Candidate, Offer, offer
 from harmonic_planner.planning.choice import buildable_prototypes, look
 from harmonic_planner.planning.evaluate import beyond_db
 from harmonic_planner.planning.jobs import Job, sample
@@ -52,50 +52,100 @@ def settle(chain: ChainArrays, jobs: Sequence[Job], margins_db: Sequence[float])
     """
     target = with_margin(chain, margins_db)
     filtered = [job.stage.filter != "none" for job in jobs]
-    fixed = [_fixed(job) for job in jobs]
-    offers = [offer(job, buildable_prototypes(job)) if f is None else None for job, f in zip(jobs, fixed, strict=True)]
-    rows = [_rows(f, o, chain.grid.count) for f, o in zip(fixed, offers, strict=True)]
+    options = [_options(job, chain.grid.count) for job in jobs]
     start = _first_orders(target, jobs, filtered)
-    filters: list[StageFilter] = []
     drawn_in_db = 0.0
+    filters: list[StageFilter] = []
+    picked: list[Candidate | None] = []
     for _ in range(_ROUNDS):
         tight = with_margin(target, [drawn_in_db] * len(jobs))
-        chosen = assign(tight, rows, start)
-        spec = requirement(tight, chosen.rejections(rows), filtered)
-        filters = []
-        for job, ready, offered, order, pick, required_db in zip(
-            jobs, fixed, offers, chosen.orders, chosen.picks, spec.required_db, strict=True
-        ):
-            if ready is not None or offered is None:
-                filters.append(ready or unfiltered(job))
-            elif not offered.filters:
-                filters.append(unfiltered(job, wanted=True, reason=_no_carrier(job)))
-            else:
-                filters.append(planned(job, offered.filters[order][pick], required_db))
-        transmissions = [sample(job, f.attenuation).transmission for job, f in zip(jobs, filters, strict=True)]
-        short_db = -beyond_db(chain, transmissions, margins_db)
+        chosen = assign(tight, [o.rows for o in options], start)
+        spec = requirement(tight, chosen.rejections([o.rows for o in options]), filtered)
+        picked = [o.candidate(n, p) for o, n, p in zip(options, chosen.orders, chosen.picks, strict=True)]
+        filters = [_filter(job, o, p, r) for job, o, p, r in zip(jobs, options, picked, spec.required_db, strict=True)]
+        short_db = -_beyond_db(chain, jobs, filters, margins_db)
         if short_db <= 0 or not chosen.met or spec.out_of_reach.any() or not all(f.meets for f in filters):
             break
         drawn_in_db += short_db + _HEADROOM_DB
-    needed = requirement(target, [f.action.rejection_db for f in filters], filtered)
+    filters, needed = _lowered(chain, target, jobs, filters, picked, margins_db)
     held = (held_to(job, f, r) for job, f, r in zip(jobs, filters, needed.required_db, strict=True))
     return Settled(tuple(held), needed)
 
 
-def _fixed(job: Job) -> StageFilter | None:
-    """Return the filter where there is nothing to choose."""
+def _lowered(
+    chain: ChainArrays,
+    target: ChainArrays,
+    jobs: Sequence[Job],
+    filters: Sequence[StageFilter],
+    picked: Sequence[Candidate | None],
+    margins_db: Sequence[float],
+) -> tuple[list[StageFilter], Rejections]:
+    """Take a lower order wherever what the circuits now do leaves a window for it, and the chain confirms it."""
+    filtered = [job.stage.filter != "none" for job in jobs]
+    current = list(filters)
+    needed = requirement(target, [f.action.rejection_db for f in current], filtered)
+    if not all(f.meets for f in current):
+        return current, needed
+    improved = True
+    while improved:
+        improved = False
+        for i, (job, candidate) in enumerate(zip(jobs, picked, strict=True)):
+            if candidate is None:
+                continue
+            trial = planned(job, candidate, needed.required_db[i])
+            if not trial.meets or _order(trial) >= _order(current[i]):
+                continue
+            changed = [*current[:i], trial, *current[i + 1 :]]
+            if _beyond_db(chain, jobs, changed, margins_db) >= 0 or needed.out_of_reach.any():
+                current, improved = changed, True
+                needed = requirement(target, [f.action.rejection_db for f in current], filtered)
+    return current, needed
+
+
+def _order(stage_filter: StageFilter) -> int:
+    return 0 if stage_filter.prototype is None else stage_filter.prototype.order
+
+
+def _beyond_db(
+    chain: ChainArrays, jobs: Sequence[Job], filters: Sequence[StageFilter], margins_db: Sequence[float]
+) -> float:
+    """Return the least margin beyond what is asked, from a forward run with these filters [dB]."""
+    transmissions = [sample(job, f.attenuation).transmission for job, f in zip(jobs, filters, strict=True)]
+    return beyond_db(chain, transmissions, margins_db)
+
+
+@dataclass(frozen=True)
+class _Options:
+    """What one stage can be: fixed, or a choice of candidates; `rows` is order -> rejections."""
+
+    fixed: StageFilter | None
+    offered: Offer
+    rows: Candidates
+
+    def candidate(self, order: int, pick: int) -> Candidate | None:
+        """Return the filter behind a row, None where there was nothing to choose."""
+        return self.offered.filters[order][pick] if order in self.offered.filters else None
+
+
+def _options(job: Job, count: int) -> _Options:
+    """Return a stage's options; one row of order 0 where there is no choice."""
     if isinstance(job.stage.filter, GivenFilter):
-        return given(job, job.stage.filter)
-    return unfiltered(job) if job.stage.filter == "none" else None
+        fixed = given(job, job.stage.filter)
+    elif job.stage.filter == "none":
+        fixed = unfiltered(job)
+    else:
+        offered = offer(job, buildable_prototypes(job))
+        if offered.filters:
+            return _Options(None, offered, offered.rejections_db)
+        return _Options(unfiltered(job, wanted=True, reason=_no_carrier(job)), offered, {0: np.zeros((1, count))})
+    return _Options(fixed, Offer({}, {}), {0: fixed.action.rejection_db[None, :]})
 
 
-def _rows(fixed: StageFilter | None, offered: Offer | None, count: int) -> Candidates:
-    """Return the rejections a stage offers by order; order 0 where there is no choice."""
-    if fixed is not None:
-        return {0: fixed.action.rejection_db[None, :]}
-    if offered is not None and offered.rejections_db:
-        return offered.rejections_db
-    return {0: np.zeros((1, count))}
+def _filter(job: Job, options: _Options, candidate: Candidate | None, required_db: Array) -> StageFilter:
+    """Return the stage's filter for this requirement."""
+    if options.fixed is not None or candidate is None:
+        return options.fixed or unfiltered(job)
+    return planned(job, candidate, required_db)
 
 
 def _first_orders(chain: ChainArrays, jobs: Sequence[Job], filtered: Sequence[bool]) -> list[int]:

@@ -7,6 +7,7 @@ from collections.abc import Sequence
 import numpy as np
 
 from harmonic_planner.chain.assemble import ChainArrays
+from harmonic_planner.chain.propagate import births
 from harmonic_planner.model import ElementReport, Scenario, StagePlan
 from harmonic_planner.planning.evaluate import Run
 from harmonic_planner.planning.settle import Settled
@@ -71,8 +72,27 @@ def _shortfall(scenario: Scenario, chain: ChainArrays, settled: Settled, to: int
                 f", and the amplifier of {scenario.stages[to].name} makes it behind the last filter: "
                 "a clean-up stage (times = 1) with a filter would take it out"
             )
-        return ", and no filter here can take it out: it is too close to the carrier or leaks past"
+        overlap = _overlap(scenario, chain, settled, to, k)
+        return f", and no filter can take it out: {overlap or 'it is too close to the carrier, or leaks past'}"
     return ""
+
+
+def _overlap(scenario: Scenario, chain: ChainArrays, settled: Settled, to: int, k: int) -> str:
+    """Say where the line was born, if it overlapped the carrier there over span and drift."""
+    rejections = [chain.from_db(-f.action.rejection_db) for f in settled.filters]
+    worst = max(births(chain, rejections, to=to), key=lambda b: float(b.paths[k].max()))
+    born, i = int(worst.paths[k].argmax()), max(worst.stage, 0)
+    stage, arrays = scenario.stages[i], chain.stages[i]
+    apart = (1 - stage.design.drift) / (1 + stage.design.drift)
+    low, high = chain.low_hz, chain.high_hz
+    line, carrier = chain.grid.line(born), chain.grid.line(arrays.carrier)
+    if high[born] < low[arrays.carrier] * apart or low[born] * apart > high[arrays.carrier] or line == carrier:
+        return ""
+    return (
+        f"over span and drift line {line} of {stage.name} ({low[born] / 1e6:.5g} to {high[born] / 1e6:.5g} MHz) "
+        f"overlaps the carrier ({low[arrays.carrier] / 1e6:.5g} to {high[arrays.carrier] / 1e6:.5g} MHz); a narrower span, or "
+        "switched sub-bands with a filter each, would"
+    )
 
 
 def _unbuildable(stages: Sequence[StagePlan]) -> str:
@@ -86,7 +106,11 @@ def _unbuildable(stages: Sequence[StagePlan]) -> str:
         if s.filter.order is None:
             words.append(f"{s.name} has no filter")
         elif swamped:
-            remedy = f"{helpful.change} would help" if helpful is not None else "no ladder helps"
+            remedy = (
+                f"{helpful.change} would help, {helpful.bandwidth_hz / helpful.centre_hz:.0%} wide"
+                if helpful is not None
+                else "no ladder helps"
+            )
             words.append(f"{s.name} ({swamped[0].ref} {_first_reason(swamped[0])}; {remedy})")
     return "strays or missing values keep these filters from being built: " + ", ".join(words)
 

@@ -9,10 +9,11 @@ import numpy as np
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
-from plan_fixture import example_plan
 
 from harmonic_planner.export.plan_json import layout, plain, plan_json
 from harmonic_planner.model import Plan
+
+from plan_fixture import example_plan
 
 # The keys that programs rely on, typed in here so that a renamed field fails.
 KEYS = {

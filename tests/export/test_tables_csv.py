@@ -8,11 +8,12 @@ from fractions import Fraction
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
-from plan_fixture import SWAMPED_REASON, example_plan, span_hz
 
 from harmonic_planner.export.nodes import line_frequency_hz, origins_text
 from harmonic_planner.export.tables import elements_csv, inert, lines_csv, requirements_csv
 from harmonic_planner.model import Origin
+
+from plan_fixture import SWAMPED_REASON, example_plan, span_hz
 
 
 def rows(text: str) -> list[dict[str, str]]:

@@ -8,10 +8,11 @@ from dataclasses import replace
 
 import pytest
 from matplotlib.figure import Figure
-from plan_fixture import buffer_stage, example_plan
 
 from harmonic_planner.report import series
 from harmonic_planner.report.figures import draw_comb, draw_response, stage_figures
+
+from plan_fixture import buffer_stage, example_plan
 
 
 def comb_axes(index: int):

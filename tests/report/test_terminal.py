@@ -4,10 +4,11 @@ import io
 from dataclasses import replace
 
 import pytest
-from plan_fixture import SWAMPED_REASON, doubler, example_plan
 from rich.console import Console
 
 from harmonic_planner.report import terminal
+
+from plan_fixture import SWAMPED_REASON, doubler, example_plan
 
 
 def shown(show=terminal.show_plan, plan=None, **settings) -> str:
