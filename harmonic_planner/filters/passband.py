@@ -12,8 +12,8 @@ Attenuations here are ln |H|^-2; arrays are (prototype, bandwidth, level).
 Notes
 -----
 There are no turning points above the largest Im p, since from there on the distance to every pole grows, and none
-at all for Butterworth: the coefficients of |1/H(jΩ + σ)|² in Ω² are then all non-negative (evaluated for orders 1–15 and
-σ = 1e-6 … 100).
+at all for Butterworth: the coefficients of |1/H(jΩ + σ)|² in Ω² are then all non-negative (evaluated for orders 1–15
+and σ = 1e-6 … 100).
 """
 
 from __future__ import annotations

@@ -2,13 +2,13 @@
 
 Everything that speaks of a circuit as built takes its strays from here.
 
-=====================  ===============================================================================================
-inductor               L in series with R(f) = ωL/Q(f); across both the capacitance of its self-resonance; then in series
-                       its mounting inductance, and its via where it goes to ground
-capacitor              C in series with its resistance and its mounted inductance, and its via where it goes to ground
-shunt parts together   two or more on one node share a pad at ground: beyond their own vias one common inductance
-pads                   each end of a part on a live node adds one pad's capacitance from that node to ground
-=====================  ===============================================================================================
+===================  =================================================================================================
+inductor             L in series with R(f) = ωL/Q(f); across both the capacitance of its self-resonance; then in series
+                     its mounting inductance, and its via where it goes to ground
+capacitor            C in series with its resistance and its mounted inductance, and its via where it goes to ground
+shunt parts          two or more on one node share a pad at ground: beyond their own vias one common inductance
+pads                 each end of a part on a live node adds one pad's capacitance from that node to ground
+===================  =================================================================================================
 
 Notes
 -----
@@ -80,7 +80,8 @@ def stations(circuit: Circuit) -> tuple[Station, ...]:
         Where the circuit is not a ladder.
     """
     found: list[Station] = []
-    node, shunt = INPUT, ()
+    node = INPUT
+    shunt: tuple[int, ...] = ()
     for arm in circuit.arms():
         if arm.placement == "shunt":
             shunt = arm.elements
@@ -103,7 +104,7 @@ def shunt_parts(circuit: Circuit, node: str) -> tuple[Element, ...]:
 
 
 def series_inductance_h(element: Element, kit: Kit) -> float:
-    """Return the inductance in series with a part [H]: mounting (a capacitor's own included), and via of a shunt one."""
+    """Return the inductance in series with a part [H]: mounting (a capacitor's own with it), and via of a shunt one."""
     own = kit.inductor.mounting_h if element.kind == "L" else kit.capacitor.inductance_h
     return own + (kit.board.via_h if element.placement == "shunt" else 0.0)
 

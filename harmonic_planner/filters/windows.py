@@ -275,9 +275,10 @@ def _why_not(prototype: Prototype, task: Task, found: Centres, p: int, start: fl
             f" with {task.flatness_db:g} dB flatness and {100.0 * task.drift:g} % drift"
         )
     low_by, high_by = int(found.low_by[p, 0]), int(found.high_by[p, 0])
-    low, high = float(found.low[p, 0]), float(found.high[p, 0])
-    # a carrier at the edge of the passband fixes the centre; between two lines the middle is as good as any
-    centre = low if low_by == 0 else high if high_by == 0 else 0.5 * (low + high)
+    # half-way between what the two ends ask for, as far as the carrier still passes
+    middle = 0.5 * float(found.low[p, 0] + found.high[p, 0])
+    reach = math.asinh(float(found.omega[p, 0, 0]) * 0.5 * bandwidth)
+    centre = min(max(middle, task.edges.b - reach), task.edges.a + reach)
     sigma = 1.0 / (bandwidth * task.unloaded_q)
     carrier = float(prototype.midband_loss_db(sigma)) + task.flatness_db
     edges = task.edges

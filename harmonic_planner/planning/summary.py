@@ -22,7 +22,7 @@ from harmonic_planner.model import (
 )
 from harmonic_planner.physics.noise import phase_noise
 from harmonic_planner.planning.evaluate import FAINTEST_DBC, Run, output_lines, worst_db
-from harmonic_planner.planning.jobs import Job
+from harmonic_planner.planning.jobs import Job, act
 from harmonic_planner.planning.notes import assumptions_for, cautions_for, warnings_for
 from harmonic_planner.planning.proposals import Advice
 from harmonic_planner.planning.selfcheck import Check
@@ -126,7 +126,7 @@ def _filter(f: Findings, i: int) -> FilterPlan:
     return FilterPlan(
         source=chosen.source,
         family=chosen.prototype.family,
-        ripple_db=chosen.prototype.ripple_db if chosen.prototype.family == "chebyshev" else None,
+        ripple_db=chosen.prototype.ripple_db,
         order=chosen.prototype.order,
         topology=None if chosen.built is None else chosen.built.topology,
         centre_hz=chosen.centre_hz,
@@ -156,7 +156,7 @@ def _requirement(f: Findings, i: int) -> tuple[Requirement, ...]:
     required_db = f.settled.needed.required_db[i]
     if chosen.ideal is None:
         return ()
-    ideal_db = _ideal_db(job, chosen)
+    ideal_db = act(job, chosen.ideal).skirt_db
     shown = np.flatnonzero((required_db > 0) | (arrays.own & (f.run.combs[i].device.max(axis=0) > 0)))
     return tuple(
         Requirement(
@@ -169,14 +169,6 @@ def _requirement(f: Findings, i: int) -> tuple[Requirement, ...]:
         )
         for k in shown
     )
-
-
-def _ideal_db(job: Job, chosen: StageFilter) -> Array:
-    """Return the rejection of the lossless prototype, without leakage."""
-    from harmonic_planner.planning.jobs import act
-
-    assert chosen.ideal is not None
-    return act(job, chosen.ideal).skirt_db
 
 
 def _return_loss_db(job: Job, chosen: StageFilter) -> float | None:

@@ -90,8 +90,8 @@ def _overlap(scenario: Scenario, chain: ChainArrays, settled: Settled, to: int, 
         return ""
     return (
         f"over span and drift line {line} of {stage.name} ({low[born] / 1e6:.5g} to {high[born] / 1e6:.5g} MHz) "
-        f"overlaps the carrier ({low[arrays.carrier] / 1e6:.5g} to {high[arrays.carrier] / 1e6:.5g} MHz); a narrower span, or "
-        "switched sub-bands with a filter each, would"
+        f"overlaps the carrier ({low[arrays.carrier] / 1e6:.5g} to {high[arrays.carrier] / 1e6:.5g} MHz); a narrower "
+        "span, or switched sub-bands with a filter each, would"
     )
 
 

@@ -51,7 +51,7 @@ def draw_comb(comb: Comb, axes: Axes) -> None:
     axes.set_xlim(0, comb.x_max)
     axes.set_ylim(floor, comb.y_max_dbc)
     _stems(axes, comb.before, floor, color=ORANGE, marker="o", filled=False, label="before the filter")
-    _stems(axes, comb.after, floor, color=BLUE, marker="s", filled=True, label="after the filter (stage output)")
+    _stems(axes, comb.after, floor, color=BLUE, marker="s", filled=True, label="stage output (after filter, amplifier)")
     _bars(axes, comb.allowed, color=GREEN, marker="v", label="allowed by the budget")
     _bars(axes, comb.limits, color=BLACK, marker="_", label="output limit")
     _stems(
@@ -98,9 +98,10 @@ def draw_response(response: Response, axes: Axes) -> None:
                 label="rejection required, over the line's span" if position == 0 else "_",
             )
         )
-        _name(axes, need.name, (need.low + need.high) / 2, 0.0)
+        if need.named:
+            _name(axes, need.name, (need.low + need.high) / 2, 0.0)
     for met, marker, color, label in (
-        (True, "o", BLUE, "as built at that line, worst over span and drift"),
+        (True, "o", BLUE, "as built at that line: worst of span, drift, leakage"),
         (False, "X", VERMILLION, "the same, less than required"),
     ):
         chosen = [need for need in response.needs if need.met is met]

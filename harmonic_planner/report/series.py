@@ -1,6 +1,7 @@
 """What each figure shows, taken from the plan: numbers on the figure's axes, ready to be drawn."""
 
 import math
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 from harmonic_planner.export.nodes import line_frequency_hz
@@ -8,7 +9,10 @@ from harmonic_planner.model import LineLevel, Plan, StagePlan
 from harmonic_planner.report.text import decibels, frequency_scale, printable, quantity
 
 _LEAST_FLOOR_DBC = -80.0
-_MOST_NAMES = 24
+_ROOM = 1.06
+"""Ratio by which an axis of frequency goes beyond what it shows."""
+_NAME_ROOM = 0.025
+"""Share of the axis that the name of a line takes."""
 _LOG_RATIO = 12.0
 """A response over a wider ratio of frequencies than this is drawn over a logarithmic axis."""
 
@@ -61,6 +65,8 @@ class Need:
     shown_db: float
     """`as_built_db`, or the end of the axis where it lies beyond."""
     met: bool
+    named: bool
+    """Its name is shown; where names would cover each other, the highest requirement's is."""
 
 
 @dataclass(frozen=True)
@@ -109,9 +115,9 @@ def comb(plan: Plan, index: int) -> Comb:
     seen = [level for level in (*stage.device_lines, *stage.output_lines) if level.level_dbc > floor]
     shown = {level.line for level in seen} | {level.line for level in allowed} | {stage.line}
     highest_hz = max(line_frequency_hz(plan, line)[1] for line in shown)
-    scale, unit = frequency_scale(highest_hz)
+    scale, unit = frequency_scale(stage.frequency_hz[1])
 
-    def marks(levels: "tuple[LineLevel, ...] | list[LineLevel]") -> tuple[Mark, ...]:
+    def marks(levels: Sequence[LineLevel]) -> tuple[Mark, ...]:
         chosen = [level for level in levels if level.line in shown - {stage.line} and level.level_dbc > floor]
         spans = [line_frequency_hz(plan, level.line) for level in chosen]
         return tuple(
@@ -121,7 +127,8 @@ def comb(plan: Plan, index: int) -> Comb:
 
     low, high = stage.frequency_hz
     before_marks, after_marks = marks(stage.device_lines), marks(stage.output_lines)
-    highest = {mark.name: mark for mark in sorted((*before_marks, *after_marks), key=lambda mark: mark.level_dbc)}
+    higher = {mark.name: mark for mark in sorted((*before_marks, *after_marks), key=lambda mark: mark.level_dbc)}
+    strongest = sorted(higher.values(), key=lambda mark: -mark.level_dbc)
     tops = [level.level_dbc for level in seen if math.isfinite(level.level_dbc)]
     return Comb(
         title=f"{_heading(index, stage)}: lines before and after the filter",
@@ -131,7 +138,7 @@ def comb(plan: Plan, index: int) -> Comb:
         after=after_marks,
         allowed=marks(allowed),
         limits=marks(limits),
-        named=tuple(sorted(highest.values(), key=lambda mark: -mark.level_dbc)[:_MOST_NAMES]),
+        named=tuple(strongest[i] for i in _apart([mark.middle for mark in strongest], _NAME_ROOM * highest_hz / scale)),
         x_max=1.04 * highest_hz / scale,
         y_min_dbc=floor,
         y_max_dbc=10.0 * math.ceil(max([0.0, *tops]) / 10.0 + 1.0),
@@ -160,9 +167,14 @@ def response(plan: Plan, index: int) -> Response:
     low, high = min(edges), max(edges)
     if low == high:
         low, high = 0.5 * low, 1.5 * high
-    scale, unit = frequency_scale(high)
+    low, high = low / _ROOM, high * _ROOM
+    scale, unit = frequency_scale(stage.frequency_hz[1])
     required = max((need.required_db for need in needs if math.isfinite(need.required_db)), default=0.0)
     y_max = 10.0 * math.ceil(max(40.0, 1.25 * required + 10.0) / 10.0)
+    logarithmic = low > 0 and high / low > _LOG_RATIO
+    place = {need.line: _place(need.frequency_hz, low, high, logarithmic=logarithmic) for need in needs}
+    ranked = sorted(needs, key=lambda need: -need.required_db)
+    named = {ranked[i].line for i in _apart([place[need.line] for need in ranked], _NAME_ROOM)}
     return Response(
         title=f"{_heading(index, stage)}: attenuation as built",
         unit=unit,
@@ -179,13 +191,31 @@ def response(plan: Plan, index: int) -> Response:
                 as_built_db=need.as_built_db,
                 shown_db=min(need.as_built_db, y_max),
                 met=need.margin_db >= 0,
+                named=need.line in named,
             )
             for need in needs
         ),
         x_range=(low / scale, high / scale),
         y_max_db=y_max,
-        logarithmic=low > 0 and high / low > _LOG_RATIO,
+        logarithmic=logarithmic,
     )
+
+
+def _apart(places: Sequence[float], room: float) -> list[int]:
+    """Choose places, the first ones before later ones, so that no two are closer than `room`; return their indices."""
+    chosen: list[int] = []
+    for index, place in enumerate(places):
+        if all(abs(place - places[other]) >= room for other in chosen):
+            chosen.append(index)
+    return chosen
+
+
+def _place(frequency_hz: tuple[float, float], low: float, high: float, *, logarithmic: bool) -> float:
+    """Place of a line on the axis from `low` to `high` [Hz], from 0 to 1."""
+    middle = sum(frequency_hz) / 2
+    if logarithmic:
+        return math.log(middle / low) / math.log(high / low)
+    return (middle - low) / (high - low)
 
 
 def _heading(index: int, stage: StagePlan) -> str:

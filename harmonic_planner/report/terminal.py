@@ -263,7 +263,8 @@ def _proposal_text(stage_name: str, proposal: Proposal) -> Text:
     """Say one proposal with what it buys and costs."""
     text = Text(
         f"{stage_name}: {printable(proposal.change)}: {filter_name(proposal.family, proposal.order)} "
-        f"{proposal.topology} at {quantity(proposal.centre_hz, 'Hz')}, worst part "
+        f"{proposal.topology}, {100 * proposal.bandwidth_hz / proposal.centre_hz:.1f} % at "
+        f"{quantity(proposal.centre_hz, 'Hz')}, loss {decibels(proposal.loss_db)} dB; worst part "
     )
     text.append(proposal.worst_verdict, style=_STYLES[proposal.worst_verdict])
     part = printable(proposal.worst_element).partition(":")[0]

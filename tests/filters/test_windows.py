@@ -97,7 +97,7 @@ def edges(work: Task) -> tuple[float, float, float, float]:
     )
 
 
-@settings(max_examples=150, deadline=None)
+@settings(max_examples=80, deadline=None)
 @given(
     prototype=prototypes,
     lower_db=st.floats(1.0, 80.0),
@@ -145,7 +145,7 @@ def test_without_dissipation_the_window_is_the_closed_form(prototype, lower_db, 
 # ------------------------------------------------------------------------------------------------- invariants
 
 
-@settings(max_examples=100, deadline=None)
+@settings(max_examples=50, deadline=None)
 @given(prototype=prototypes, work=tasks())
 def test_the_answer_passes_a_direct_check(prototype, work):
     """A at dense points of span and drift, at both ends of the window."""
@@ -173,7 +173,7 @@ def test_the_answer_passes_a_direct_check(prototype, work):
             assert (achieved(prototype, work, centre, delta) >= work.rejection_db - 1e-6).all()
 
 
-@settings(max_examples=100, deadline=None)
+@settings(max_examples=50, deadline=None)
 @given(prototype=prototypes, work=tasks(), more=st.floats(0.1, 20.0), which=st.integers(0, 7))
 def test_tighter_rejection_never_widens_the_window(prototype, work, more, which):
     before = solve(prototype, work)
@@ -187,7 +187,7 @@ def test_tighter_rejection_never_widens_the_window(prototype, work, more, which)
         assert after.bandwidth_max <= before.bandwidth_max * (1.0 + 1e-6)
 
 
-@settings(max_examples=60, deadline=None)
+@settings(max_examples=30, deadline=None)
 @given(prototype=prototypes, work=tasks(), factor=st.floats(1e-3, 50.0))
 def test_scaling_all_frequencies_scales_the_centre_and_leaves_the_bandwidth(prototype, work, factor):
     lo, hi = work.passband_hz
@@ -205,7 +205,7 @@ def test_scaling_all_frequencies_scales_the_centre_and_leaves_the_bandwidth(prot
         assert after.centres_max_hz == pytest.approx([f * factor for f in before.centres_max_hz], rel=1e-6)
 
 
-@settings(max_examples=60, deadline=None)
+@settings(max_examples=30, deadline=None)
 @given(prototype=prototypes, work=tasks(), seed=st.integers(0, 2**32 - 1))
 def test_the_order_of_the_lines_and_lines_that_are_easier_change_nothing(prototype, work, seed):
     """A line further out that needs less than a nearer one is covered by it."""
@@ -222,7 +222,7 @@ def test_the_order_of_the_lines_and_lines_that_are_easier_change_nothing(prototy
     assert solve(prototype, other) == replace(solve(prototype, work), reason=solve(prototype, other).reason)
 
 
-@settings(max_examples=60, deadline=None)
+@settings(max_examples=30, deadline=None)
 @given(prototype=prototypes, work=tasks(), share=st.floats(0.0, 1.0))
 def test_centres_inside_the_window_exist_and_beyond_its_ends_do_not(prototype, work, share):
     result = solve(prototype, work)
@@ -235,7 +235,7 @@ def test_centres_inside_the_window_exist_and_beyond_its_ends_do_not(prototype, w
         assert centres(prototype, work, beyond) is None
 
 
-@settings(max_examples=60, deadline=None)
+@settings(max_examples=30, deadline=None)
 @given(
     prototype=prototypes,
     centre=st.floats(0.9, 1.1),
@@ -276,7 +276,9 @@ def test_rejection_is_the_least_over_line_and_drift_minus_the_carrier_most(
 
 def test_scan_lists_every_family_and_order_and_agrees_with_solve():
     results = scan(task(), families=FAMILIES, ripple_db=0.1, max_order=9)
-    assert [(r.prototype.family, r.prototype.order) for r in results] == [(f, n) for f in FAMILIES for n in range(1, 10)]
+    assert [(r.prototype.family, r.prototype.order) for r in results] == [
+        (f, n) for f in FAMILIES for n in range(1, 10)
+    ]
     for result in results:
         alone = solve(result.prototype, task())
         assert alone.feasible == result.feasible
@@ -307,10 +309,9 @@ def test_the_floor_comes_before_the_order():
 
 def test_a_loss_limit_breaks_the_monotony_in_order():
     """Order 9 loses too much at a bandwidth where a lower order serves."""
-    work = task(loss_db=2.0, unloaded_q=60.0, rejection_db=np.array([20.0, 18.0]), floor=0.02)
+    work = task(loss_db=1.5, unloaded_q=40.0, rejection_db=np.array([25.0, 25.0]), floor=0.02)
     feasible = [r.feasible for r in scan(work, families=("butterworth",), ripple_db=0.1, max_order=9)]
-    assert any(feasible)
-    assert not feasible[-1]
+    assert feasible == [False, False, True, True, True, True, True, True, False]
 
 
 def test_one_sided_and_lineless_requirements_reach_the_cap():
@@ -342,25 +343,37 @@ def test_lines_that_need_nothing_are_passed_over():
         (Prototype("butterworth", 9), {"unloaded_q": 5.0}, "above the limit of 6 dB"),
         (Prototype("chebyshev", 4, 0.5), {"loss_db": 0.3}, "above the limit of 0.3 dB"),
         (Prototype("butterworth", 3), {"floor": 1.2}, "the bandwidth floor of 120 % is above the cap of 100 %"),
-        (Prototype("butterworth", 3), {"passband_hz": (400e6, 800e6)}, "no bandwidth up to 100 % passes 400 to 800 MHz"),
+        (
+            Prototype("butterworth", 3),
+            {"passband_hz": (300e6, 900e6)},
+            "no bandwidth up to 100 % passes 300 to 900 MHz",
+        ),
         (Prototype("butterworth", 1), {}, "the line at 297 to 303 MHz needs 45.0 dB and gets"),
         (Prototype("butterworth", 2), {"floor": 0.3}, "at 30 % bandwidth, the floor, "),
-        (Prototype("butterworth", 9), {"loss_db": 1.5}, "the narrowest within the loss limit, the line at"),
-        (Prototype("butterworth", 1), {"floor": 0.0, "loss_db": 9.0}, "the narrowest that passes the carrier, the line at"),
+        (
+            Prototype("butterworth", 9),
+            {"loss_db": 1.5, "unloaded_q": 40.0, "rejection_db": np.array([25.0, 25.0])},
+            "the narrowest within the loss limit, the line at",
+        ),
+        (
+            Prototype("butterworth", 1),
+            {"floor": 0.0, "loss_db": 9.0},
+            "the narrowest that passes the carrier, the line",
+        ),
     ],
     ids=lambda v: v.name if isinstance(v, Prototype) else None,
 )
 def test_reasons_say_which_line_and_why(prototype, changes, words):
     lines = {"line_low_hz": np.array([297e6, 891e6]), "line_high_hz": np.array([303e6, 909e6])}
     if changes.get("passband_hz"):
-        lines = {"line_low_hz": np.array([200e6, 1500e6]), "line_high_hz": np.array([200e6, 1500e6])}
+        lines = {"line_low_hz": np.array([100e6, 2500e6]), "line_high_hz": np.array([100e6, 2500e6])}
     result = solve(prototype, task(**{**lines, **changes}))
     assert not result.feasible
     assert words in result.reason
     assert math.isnan(result.bandwidth_min)
 
 
-@settings(max_examples=60, deadline=None)
+@settings(max_examples=30, deadline=None)
 @given(prototype=prototypes, work=tasks())
 def test_a_reason_with_numbers_never_contradicts_itself(prototype, work):
     """What a line `gets` in the reason is below what it `needs`."""

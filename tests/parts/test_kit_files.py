@@ -42,6 +42,31 @@ def test_verdict_and_bandwidth_have_the_usual_values_where_they_are_left_out(tmp
     assert (kit.untuned_factor, kit.tuned_factor) == (shipped.untuned_factor, shipped.tuned_factor)
 
 
+NEWER_KEYS = re.compile(r"^(temperature|current|voltage|parallel|shared_via) = .*\n", re.MULTILINE)
+
+
+def test_ratings_drift_parallel_parts_and_shared_vias_may_be_left_out(tmp_path: Path):
+    text, removed = NEWER_KEYS.subn("", BARE)
+    assert removed == 7
+    (tmp_path / "own.toml").write_text(text, encoding="utf-8")
+    kit = load_kit("own.toml", tmp_path)
+    assert (kit.inductor.temperature_per_k, kit.inductor.current_a, kit.inductor.parallel) == (None, None, False)
+    assert (kit.capacitor.temperature_per_k, kit.capacitor.voltage_v, kit.capacitor.parallel) == (None, None, False)
+    assert kit.board.shared_via_h == 0
+    assert not kit.tuned
+
+
+def test_a_trimmer_kit_states_a_continuous_range(tmp_path: Path):
+    text = BARE.replace('grid = "E24"\ntolerance = "2 %"', 'grid = "continuous"\ntolerance = "2 %"')
+    text = text.replace('title = "', 'tuned = true\ntitle = "', 1)
+    (tmp_path / "own.toml").write_text(text, encoding="utf-8")
+    kit = load_kit("own.toml", tmp_path)
+    assert kit.tuned
+    assert kit.capacitor.continuous
+    with pytest.raises(PlannerError, match="continuous range"):
+        kit.capacitor.values_f()
+
+
 def test_a_grid_may_be_a_list_of_values(tmp_path: Path):
     text = BARE.replace('grid = "E24"', 'grid = ["1.0 nH", "2.2 nH", "15 nH"]', 1)
     (tmp_path / "own.toml").write_text(text, encoding="utf-8")
@@ -50,7 +75,7 @@ def test_a_grid_may_be_a_list_of_values(tmp_path: Path):
 
 INDUCTOR_KEYS = (
     "smallest, largest, grid, tolerance, q, q_frequency, q_exponent, q_most, self_resonance, "
-    "self_resonance_inductance, self_resonance_exponent, mounting"
+    "self_resonance_inductance, self_resonance_exponent, mounting, temperature, current, parallel"
 )
 
 
@@ -91,6 +116,23 @@ INDUCTOR_KEYS = (
          "capacitor.dissipation = -1: Input should be greater than or equal to 0"),
         ('stray_ok = "10 %"', 'stray_ok = "30 %"', "verdict: stray_ok must not exceed stray_marginal"),
         ("resonance_ok = 3.0", "resonance_ok = 1.0", "verdict: resonance_ok must not be below resonance_marginal"),
+        ('grid = "E24"\ntolerance = "2 %"', 'grid = "continous"\ntolerance = "2 %"',
+         "capacitor.grid = 'continous': expected one of E3, E6, E12, E24, E48, E96, continuous, or a list of values "
+         "in F, above zero and ascending"),
+        ('grid = "E24"', 'grid = "continuous"',
+         "inductor.grid = 'continuous': expected one of E3, E6, E12, E24, E48, E96, or a list of values in H, "
+         "above zero and ascending"),
+        ('temperature = "100 ppm/K"', 'temperature = "100 ppm"',
+         "inductor.temperature = '100 ppm': expected a text with the unit ppm/K, such as '30 ppm/K'"),
+        ('temperature = "100 ppm/K"', 'temperature = "100000 ppm/K"',
+         "inductor.temperature = '100000 ppm/K': Input should be less than 0.01"),
+        ('current = "0.6 A"', 'current = "0.6 V"',
+         "inductor.current = '0.6 V': expected a text with the unit A, such as '0.6 A'"),
+        ('voltage = "50 V"', 'voltage = "0 V"', "capacitor.voltage = '0 V': Input should be greater than 0"),
+        ("parallel = true", 'parallel = "yes"', "capacitor.parallel = 'yes': Input should be a valid boolean"),
+        ('shared_via = "20 pH"', 'shared_via = "20 pF"',
+         "board.shared_via = '20 pF': expected a text with the unit H, such as '10 nH'"),
+        ('name = "chip-0603"', 'name = "chip-0603"\ntuned = 1', "tuned = 1: Input should be a valid boolean"),
         ('name = "chip-0603"', "name = 5", "name = 5: Input should be a valid string"),
         ('name = "chip-0603"', 'name = ""', "name = '': String should have at least 1 character"),
         ('name = "chip-0603"', "", "name is missing; it is required"),
@@ -110,7 +152,7 @@ def test_every_fault_of_a_file_is_told_at_once(tmp_path: Path):
     assert problems(tmp_path, text) == (
         "inductor.q = -1: Input should be greater than 0",
         "board.via is missing; it is required",
-        "board.vias = '0.20 nH': unknown key; nearest: via; allowed: via, pad",
+        "board.vias = '0.20 nH': unknown key; nearest: via; allowed: via, pad, shared_via",
         "bandwidth.tuned = []: Input should be a valid number",
     )
 
@@ -142,7 +184,8 @@ def test_a_folder_bytes_and_a_name_that_is_no_kit(tmp_path: Path):
     with pytest.raises(KitError) as caught:
         load_kit("chip-0630", tmp_path)
     assert str(caught.value) == (
-        "kit = 'chip-0630': neither a shipped kit (chip-0603, chip-1008) nor a kit file; nearest: chip-0603"
+        "kit = 'chip-0630': neither a shipped kit "
+        "(air-wound, chip-0402, chip-0603, chip-0805, chip-1008, chip-trimmer) nor a kit file; nearest: chip-0603"
     )
     with pytest.raises(KitError, match="neither a shipped kit"):
         load_kit("", tmp_path)

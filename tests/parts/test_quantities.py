@@ -20,6 +20,10 @@ from harmonic_planner.parts.quantities import quantity, readable
         ("0.1 Ω", "ohm", 0.1),
         ("3.5 %", "%", 0.035),
         ("0 pF", "F", 0.0),
+        ("600 mA", "A", 0.6),
+        ("50 V", "V", 50.0),
+        ("30 ppm/K", "ppm/K", 30e-6),
+        ("-750ppm/K", "ppm/K", -750e-6),
     ],
 )
 def test_reads_a_value_with_its_unit(text, unit, value):
@@ -33,6 +37,12 @@ def test_reads_a_value_with_its_unit(text, unit, value):
 def test_anything_but_a_frequency_is_refused_where_a_frequency_belongs(text):
     with pytest.raises(ValueError, match="Hz"):
         quantity(text, "Hz")
+
+
+@pytest.mark.parametrize("text", ["30 ppm", "30", "30 K", "ppm/K", "nan ppm/K", "inf ppm/K", "x ppm/K", 30, None])
+def test_anything_but_a_temperature_coefficient_is_refused_where_one_belongs(text):
+    with pytest.raises(ValueError, match="30 ppm/K"):
+        quantity(text, "ppm/K")
 
 
 @given(st.floats(1e-10, 1e-4), st.sampled_from(["H", "F", "Hz"]))

@@ -45,7 +45,7 @@ def ladder_db(prototype: Prototype, omega: np.ndarray, sigma: float) -> np.ndarr
 @pytest.mark.parametrize("prototype", ALL, ids=lambda p: p.name)
 @pytest.mark.parametrize("sigma", [0.0, 0.003, 0.05, 0.4])
 def test_attenuation_equals_the_lossy_ladder_of_its_g_values(prototype, sigma):
-    """Independent: nodal (chain-matrix) solution of the ladder; g-values, poles and scale factor agree with each other."""
+    """Independent: chain-matrix solution of the ladder; g-values, poles and scale factor agree with each other."""
     omega = np.array([0.0, 0.1, 0.5, 0.9, 1.0, 1.1, 2.0, 7.0])
     assert prototype.attenuation_db(omega, sigma) == pytest.approx(ladder_db(prototype, omega, sigma), abs=2e-8)
 
@@ -121,7 +121,8 @@ def test_attenuation_broadcasts_frequency_against_dissipation():
 @given(st.floats(1e6, 1e10), st.floats(0.005, 0.9), st.floats(1.001, 5.0))
 def test_mapping_has_geometric_symmetry_and_unit_edges(centre_hz, bandwidth, ratio):
     upper, lower = (
-        float(bandpass_omega(f, centre_hz=centre_hz, bandwidth=bandwidth)) for f in (centre_hz * ratio, centre_hz / ratio)
+        float(bandpass_omega(f, centre_hz=centre_hz, bandwidth=bandwidth))
+        for f in (centre_hz * ratio, centre_hz / ratio)
     )
     assert upper == pytest.approx(lower, rel=1e-9)
     edge = centre_hz * (math.sqrt(1.0 + bandwidth**2 / 4.0) + bandwidth / 2.0)

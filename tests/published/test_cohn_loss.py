@@ -1,16 +1,17 @@
 """Cohn's midband loss against the exact dissipated response.
 
-Source: S. B. Cohn, "Dissipation Loss in Multiple-Coupled-Resonator Filters", Proc. IRE 47 (1959), pp. 1342-1348: the loss
-at the centre is 4.343·Σg/(Δ·Q_u) dB, and the band edge loses more (published).
+Source: S. B. Cohn, "Dissipation Loss in Multiple-Coupled-Resonator Filters", Proc. IRE 47 (1959), pp. 1342-1348: the
+loss at the centre is 4.343·Σg/(Δ·Q_u) dB, and the band edge loses more (published).
 
 Common practice says "within 2 % up to 5 dB of loss". Measured here, that holds for Butterworth from order 3, for
-Chebyshev 0.01 dB from order 3, and for odd Chebyshev orders from 5 up to 0.2 dB ripple. The formula always says too much; elsewhere by
+Chebyshev 0.01 dB from order 3, and for odd Chebyshev orders from 5 up to 0.2 dB ripple. The formula always says too
+much; elsewhere by
 
 * order 1, every family: 21.0 % at 5 dB, since the loss is then 20 log10(1 + σ·g1/2);
 * order 2: 3.7 % at 5 dB for Butterworth, 3.0 % for Chebyshev 0.01 dB;
 * order 3: 2.2 % at 5 dB for Chebyshev 0.1 dB, 3.0 % for 0.2 dB; odd orders at 0.5 dB: 4.9 % (n = 3) to 2.8 % (n = 9);
-* even Chebyshev orders at every loss, since their centre is a point of mismatch: 2.1 % at 0.1 dB ripple, 4.2 % at 0.2 dB, 10.2 % at
-  0.5 dB (order 8, small loss).
+* even Chebyshev orders at every loss, since their centre is a point of mismatch: 2.1 % at 0.1 dB ripple, 4.2 % at
+  0.2 dB, 10.2 % at 0.5 dB (order 8, small loss).
 """
 
 from __future__ import annotations

@@ -1,10 +1,11 @@
 """Element values of Butterworth and Chebyshev prototypes at printed digits.
 
 Source: G. L. Matthaei, L. Young, E. M. T. Jones, *Microwave Filters, Impedance-Matching Networks, and Coupling
-Structures*, McGraw-Hill 1964, Table 4.05-1(a) "Element values for filters with maximally flat attenuation having g0 = 1,
-ω1' = 1 and n = 1 to 10" (edge at 3 dB) and Table 4.05-2(a) "Element values for filters with Tchebyscheff responses having
-g0 = 1, ω1' = 1" for 0.01, 0.1, 0.2 and 0.5 dB. The digits are typed from memory (published); a slip of memory would show,
-since every value is confirmed to more digits by continued-fraction synthesis from the poles (independent).
+Structures*, McGraw-Hill 1964, Table 4.05-1(a) "Element values for filters with maximally flat attenuation having
+g0 = 1, ω1' = 1 and n = 1 to 10" (edge at 3 dB) and Table 4.05-2(a) "Element values for filters with Tchebyscheff
+responses having g0 = 1, ω1' = 1" for 0.01, 0.1, 0.2 and 0.5 dB. The digits are typed from memory (published); a slip of
+memory would show, since every value is confirmed to more digits by continued-fraction synthesis from the poles
+(independent).
 """
 
 from __future__ import annotations
@@ -125,8 +126,9 @@ def synthesised(prototype: Prototype) -> np.ndarray:
     return np.array([float(v) for v in [*elements, top[0] / bottom[0], bottom[0] / top[1]]])
 
 
-# Entries further from the exact value than their table's rule allows, as (ripple, order, k): difference in units of the last
-# digit. The row n = 7 of the 0.5 dB table is off throughout (its g3 by 1.9 units); the other five are cut off one too low.
+# Entries further from the exact value than their table's rule allows, as (ripple, order, k): difference in units of the
+# last digit. The row n = 7 of the 0.5 dB table is off throughout (its g3 by 1.9 units); the other five are a unit low.
+# Whether print or memory is at fault is not known.
 DISCREPANCIES = {
     (0.1, 7, 4): 1.01,
     (0.1, 9, 2): 1.01,

@@ -12,7 +12,7 @@ from matplotlib.figure import Figure
 from harmonic_planner.report import series
 from harmonic_planner.report.figures import draw_comb, draw_response, stage_figures
 
-from plan_fixture import buffer_stage, example_plan
+from plan_fixture import buffer_stage, doubler, example_plan, levels, requirement, tripler
 
 
 def comb_axes(index: int):
@@ -45,7 +45,12 @@ def boxes(axes) -> list[tuple[float, float, float]]:
 def test_comb_shows_lines_before_and_after_at_their_frequencies():
     axes = comb_axes(0)
     assert drawn(axes, "before the filter") == [(20.0, 8.5), (40.0, -22.0), (80.0, -25.5), (100.0, -6.0)]
-    assert drawn(axes, "after the filter (stage output)") == [(20, -52.0), (40, -61.0), (80, -58.0), (100, -60.25)]
+    assert drawn(axes, "stage output (after filter, amplifier)") == [
+        (20, -52.0),
+        (40, -61.0),
+        (80, -58.0),
+        (100, -60.25),
+    ]
     assert drawn(axes, "carrier (line 3)") == [(60.0, 0.0)]
 
 
@@ -70,6 +75,22 @@ def test_comb_leaves_out_what_lies_under_its_floor_but_never_a_limit():
     comb = series.comb(example_plan(), 1)
     assert comb.y_min_dbc <= min(mark.level_dbc for mark in comb.allowed) - 10
     assert "9" not in {mark.name for mark in series.comb(example_plan(), 0).before}
+
+
+def test_names_that_would_cover_each_other_are_left_out_the_weaker_ones():
+    plan = example_plan()
+    stage = replace(tripler(), device_lines=levels(k1=8.5, k2=-22.0, k201_100=-30.0, k5=-6.0), output_lines=())
+    named = series.comb(replace(plan, stages=(stage, *plan.stages[1:])), 0).named
+    assert [mark.name for mark in named] == ["1", "5", "2"]
+
+
+def test_requirements_that_stand_close_name_only_the_highest():
+    plan = example_plan()
+    needs = (requirement("5", 12.0, 20.0), requirement("501/100", 15.0, 20.0), requirement("12", 30.0, 40.0))
+    stage = replace(doubler(), filter=replace(doubler().filter, requirement=needs))
+    axes = response_axes(1, replace(plan, stages=(plan.stages[0], stage, plan.stages[2])))
+    assert {text.get_text() for text in axes.texts} == {"501/100", "12"}
+    assert len(boxes(axes)) == 3
 
 
 def test_each_kind_of_line_has_a_marker_of_its_own():
@@ -100,14 +121,14 @@ def test_response_curve_is_relative_to_midband():
 def test_response_marks_a_missed_requirement_apart():
     axes = response_axes(1)
     assert drawn(axes, "the same, less than required") == [(100.0, 11.5)]
-    assert [x for x, _ in drawn(axes, "as built at that line, worst over span and drift")] == [60.0, 240.0]
+    assert [x for x, _ in drawn(axes, "as built at that line: worst of span, drift, leakage")] == [60.0, 240.0]
     assert "the same, less than required" not in legend(response_axes(0))
 
 
 def test_a_rejection_beyond_the_axis_is_drawn_at_its_end():
     axes = response_axes(1)
     bottom, _ = axes.get_ylim()
-    assert drawn(axes, "as built at that line, worst over span and drift")[-1][1] == bottom
+    assert drawn(axes, "as built at that line: worst of span, drift, leakage")[-1][1] == bottom
 
 
 def test_response_has_units_says_the_filter_and_shows_every_requirement_within_its_limits():
