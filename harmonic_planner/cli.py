@@ -211,6 +211,7 @@ def main(arguments: Sequence[str] | None = None) -> int:
     int
         The exit status.
     """
+    os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")  # small matrices: threads cost more than they bring
     for stream in (sys.stdout, sys.stderr):
         if isinstance(stream, io.TextIOWrapper):
             stream.reconfigure(errors="replace")  # a terminal that cannot show × shows ?

@@ -335,6 +335,8 @@ class StagePlan:
     device_lines: tuple[LineLevel, ...]
     output_lines: tuple[LineLevel, ...]
     filter: FilterPlan
+    limit_dbc: float | None = None
+    """The stage's own limit at its output, where it has one."""
 
 
 @dataclass(frozen=True)

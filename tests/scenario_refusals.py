@@ -2,6 +2,10 @@
 
 from scenario_documents import DEVICE, amplifier, device, document, given_filter
 
+from harmonic_planner.parts.kits import kit_names
+
+KITS = ", ".join(f'"{name}"' for name in kit_names())
+
 REFUSED = {
     # missing
     "no source": '[output]\nlimit = "-60 dBc"\n[[stage]]\ntimes = 1',
@@ -225,12 +229,7 @@ EXPECTED = {
     "unknown phases": ['design.phases = "worst": must be one of "worst-case", "average"'],
     "unknown topology": [f'design.topology = "lader": {TOPOLOGY}; did you mean "ladder"?'],
     "auto in a list": [f'design.topology = ["auto", "ladder"]: {TOPOLOGY}'],
-    "unknown kit": [
-        (
-            'design.kit = "chip-0604": must be "chip-0603", "chip-1008" or the path of a kit file; did you '
-            'mean "chip-0603"?'
-        )
-    ],
+    "unknown kit": [f'design.kit = "chip-0604": must be {KITS} or the path of a kit file; did you mean "chip-0603"?'],
     "unknown filter": [
         ('stage[1].filter = "auto": must be "plan", "none" or a table { family, order, centre, bandwidth }')
     ],

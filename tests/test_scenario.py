@@ -13,6 +13,7 @@ import pytest
 from scenario_documents import DEVICE, FULL, amplifier, device, document, given_filter, read
 
 from harmonic_planner.model import Amplifier, Design, Device, GivenFilter, Isolation, MaskBand
+from harmonic_planner.parts.kits import kit_names
 from harmonic_planner.scenario import ScenarioError, load
 from harmonic_planner.scenario_tables import DesignTable, StageTable
 
@@ -67,7 +68,8 @@ def test_byte_order_mark_and_carriage_returns_are_taken(tmp_path):
 def test_a_kit_file_is_looked_up_beside_the_scenario(tmp_path):
     path = tmp_path / "chain.toml"
     path.write_text(document(design='kit = "own.toml"'))
-    allowed = 'design.kit = "own.toml": must be "chip-0603", "chip-1008" or the path of a kit file; '
+    kits = ", ".join(f'"{name}"' for name in kit_names())
+    allowed = f'design.kit = "own.toml": must be {kits} or the path of a kit file; '
     assert file_problem(path) == (allowed + "not found",)
     (tmp_path / "own.toml").write_text("")
     assert all(problem.startswith(allowed) for problem in file_problem(path))

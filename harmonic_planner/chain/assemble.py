@@ -9,9 +9,9 @@ from numpy.typing import NDArray
 
 from harmonic_planner.chain.allowances import Allowance, allowance
 from harmonic_planner.chain.lines import LineGrid, grid_for, output_limits_dbc
-from harmonic_planner.model import Phases, Scenario
+from harmonic_planner.model import Phases, PlannerError, Scenario
 from harmonic_planner.physics.amplifiers import amplifier_lines
-from harmonic_planner.physics.conversion import conversion_matrix, device_lines
+from harmonic_planner.physics.conversion import check_device, conversion_matrix, device_lines
 
 Array = NDArray[np.float64]
 
@@ -98,6 +98,11 @@ def assemble(scenario: Scenario, *, phases: Phases) -> ChainArrays:
     Returns
     -------
     ChainArrays
+
+    Raises
+    ------
+    PlannerError
+        Where a device cannot be used; the message names the stage.
     """
     grid = grid_for(scenario)
     exponent = 1 if phases == "worst-case" else 2
@@ -114,14 +119,17 @@ def assemble(scenario: Scenario, *, phases: Phases) -> ChainArrays:
         carrier = grid.index(scenario.carrier(i))
         device = np.zeros(grid.count)
         own = np.zeros(grid.count, dtype=bool)
-        if stage.device is None:
-            conversion = np.eye(grid.count)
-        else:
-            conversion = conversion_matrix(
-                stage.device, stage.times, carrier_index=carrier_in, count=grid.count, power=exponent == 2
-            )
+        conversion = np.eye(grid.count)
+        if stage.device is not None:
             multiples = np.arange(carrier_in, grid.count + 1, carrier_in)
-            device[multiples - 1] = device_lines(stage.device, stage.times, len(multiples))[1:] ** exponent
+            try:
+                check_device(stage.device, stage.times)
+                conversion = conversion_matrix(
+                    stage.device, stage.times, carrier_index=carrier_in, count=grid.count, power=exponent == 2
+                )
+                device[multiples - 1] = device_lines(stage.device, stage.times, len(multiples))[1:] ** exponent
+            except PlannerError as fault:
+                raise PlannerError(f'stage[{i + 1}].{fault} (stage "{stage.name}")') from fault
             own[multiples - 1] = True
         spread = conversion[carrier].copy()
         conversion[carrier] = 0.0

@@ -17,7 +17,7 @@ from numpy.typing import NDArray
 
 from harmonic_planner.chain.assemble import Array, ChainArrays, StageArrays
 from harmonic_planner.chain.budget import without_limits
-from harmonic_planner.chain.propagate import path_gains, propagate
+from harmonic_planner.chain.propagate import propagate
 
 Candidates = Mapping[int, Array]
 """Order -> rejections of its candidates [dB], shape (candidates, lines)."""
@@ -182,15 +182,19 @@ def reduced(chain: ChainArrays, stages: Sequence[Options]) -> tuple[ReducedStage
     best = propagate(chain, [s.passed.min(axis=0) for s in stages], allowed=True)
     worst_passed = [s.passed.max(axis=0) for s in stages]
     worst = propagate(chain, worst_passed, allowed=True)
+    gains = _most_gains(chain, worst_passed)
     count = chain.grid.count
     before = np.zeros(0, dtype=int)
     fixed = chain.source
     found = []
-    for i, (stage, option) in enumerate(zip(chain.stages, stages, strict=True)):
-        gain = _most_gain(chain, worst_passed, i)
+    for i, (stage, option, gain) in enumerate(zip(chain.stages, stages, gains, strict=True)):
         made_most = stage.mismatch * worst[i].device
         near = worst[i].leaving > _NEVER_NEAR * stage.limit
-        kept = np.flatnonzero((gain * worst[i].leaving > NEGLIGIBLE / count) | near)
+        share = gain * worst[i].leaving
+        ascending = np.argsort(share)
+        negligible = np.zeros(count, dtype=bool)
+        negligible[ascending[np.cumsum(share[ascending]) <= NEGLIGIBLE]] = True
+        kept = np.flatnonzero(~negligible | near)
         gain = np.maximum(gain, np.where(near, 1.0 / stage.limit, 0.0))[kept]
         allowed = NEGLIGIBLE / (max(kept.size, 1) * np.maximum(gain, 1e-300))
         limited = np.flatnonzero(near[kept])
@@ -265,12 +269,16 @@ def _made(stage: StageArrays, before: Array) -> Array:
     return np.asarray(stage.termination * (stage.device + before @ stage.conversion.T))
 
 
-def _most_gain(chain: ChainArrays, worst_passed: Sequence[Array], i: int) -> Array:
-    """Return for each line behind stage `i` the largest gain into any later limit, per unit of that limit."""
-    most = np.zeros(chain.grid.count)
-    for to in range(i + 1, len(chain.stages)):
-        limit = chain.stages[to].limit
-        if np.isfinite(limit).any():
-            gains = path_gains(chain, worst_passed, after=i, to=to, allowed=True)
-            most = np.maximum(most, (gains / limit[:, None]).max(axis=0))
-    return most
+def _most_gains(chain: ChainArrays, worst_passed: Sequence[Array]) -> list[Array]:
+    """Return for each line behind each stage the largest gain into any later limit, per unit of that limit."""
+    gains = np.zeros((0, chain.grid.count))
+    most = [np.zeros(chain.grid.count)]
+    for i in range(len(chain.stages) - 1, 0, -1):
+        stage = chain.stages[i]
+        limited = np.flatnonzero(np.isfinite(stage.limit))
+        own = np.zeros((limited.size, chain.grid.count))
+        own[np.arange(limited.size), limited] = 1.0 / stage.limit[limited]
+        through = stage.mismatch * stage.termination * worst_passed[i]
+        gains = (np.concatenate([own, gains]) * through) @ stage.conversion
+        most.append(gains.max(axis=0, initial=0.0))
+    return most[::-1]

@@ -123,8 +123,13 @@ class CapacitorKit:
             Dielectric and conductor loss in series, tan δ/(ωC) + R_ref sqrt(f/f_ref) [ohm].
         """
         frequency = np.asarray(frequency_hz, dtype=np.float64)
-        conductor = self.esr_reference_ohm * np.sqrt(frequency / self.esr_reference_hz)
-        return np.asarray(self.dissipation / (2 * np.pi * frequency * capacitance_f) + conductor)
+        dielectric = self.dissipation / (2 * np.pi * frequency * capacitance_f)
+        return np.asarray(dielectric + self.conductor_ohm(frequency))
+
+    def conductor_ohm(self, frequency_hz: FloatOrArray) -> NDArray[np.float64]:
+        """Return the conductor's part of a capacitor's resistance, any shape [ohm]: R_ref sqrt(f/f_ref)."""
+        ratio = np.asarray(frequency_hz, dtype=np.float64) / self.esr_reference_hz
+        return np.asarray(self.esr_reference_ohm * np.sqrt(ratio))
 
     def q(self, capacitance_f: FloatOrArray, frequency_hz: FloatOrArray) -> NDArray[np.float64]:
         """Return the unloaded Q of a capacitor: its reactance over its series resistance; arguments broadcast."""

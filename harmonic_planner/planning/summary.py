@@ -105,6 +105,7 @@ def _stage(f: Findings, i: int) -> StagePlan:
         device_lines=_lines(f.chain, comb.device),
         output_lines=_lines(f.chain, comb.leaving),
         filter=_filter(f, i),
+        limit_dbc=stage.limit_dbc,
     )
 
 

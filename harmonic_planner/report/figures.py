@@ -53,7 +53,7 @@ def draw_comb(comb: Comb, axes: Axes) -> None:
     _stems(axes, comb.before, floor, color=ORANGE, marker="o", filled=False, label="before the filter")
     _stems(axes, comb.after, floor, color=BLUE, marker="s", filled=True, label="stage output (after filter, amplifier)")
     _bars(axes, comb.allowed, color=GREEN, marker="v", label="allowed by the budget")
-    _bars(axes, comb.limits, color=BLACK, marker="_", label="output limit")
+    _bars(axes, comb.limits, color=BLACK, marker="_", label="limit")
     _stems(
         axes, (comb.carrier,), floor, color=BLACK, marker="D", filled=True, label=f"carrier (line {comb.carrier.name})"
     )

@@ -3,6 +3,7 @@
 import math
 from collections.abc import Sequence
 from dataclasses import dataclass
+from fractions import Fraction
 
 from harmonic_planner.export.nodes import line_frequency_hz
 from harmonic_planner.model import LineLevel, Plan, StagePlan
@@ -45,7 +46,7 @@ class Comb:
     allowed: tuple[Mark, ...]
     """What the budget allows behind the filter: level before it less the rejection required."""
     limits: tuple[Mark, ...]
-    """The limit at the chain's output; only at the last stage."""
+    """The stage's own limit, or the chain's at the last stage."""
     named: tuple[Mark, ...]
     """The strongest lines, each at the higher of its two levels, to be marked with their harmonic number."""
     x_max: float
@@ -85,6 +86,19 @@ class Response:
     logarithmic: bool
 
 
+def _limits(plan: Plan, index: int) -> list[LineLevel]:
+    """Return the limit at every line of a stage's output, the stricter where the chain's stands there too."""
+    stage = plan.stages[index]
+    found: dict[Fraction, float] = {}
+    if stage.limit_dbc is not None:
+        found = {level.line: stage.limit_dbc for level in stage.output_lines}
+    if index == len(plan.stages) - 1:
+        for line in plan.output.lines:
+            if line.limit_dbc is not None:
+                found[line.line] = min(line.limit_dbc, found.get(line.line, line.limit_dbc))
+    return [LineLevel(line, limit) for line, limit in found.items()]
+
+
 def comb(plan: Plan, index: int) -> Comb:
     """Collect the comb of one stage.
 
@@ -107,8 +121,7 @@ def comb(plan: Plan, index: int) -> Comb:
         for need in stage.filter.requirement
         if need.required_db > 0 and need.line in before
     ]
-    at_output = plan.output.lines if index == len(plan.stages) - 1 else ()
-    limits = [LineLevel(line.line, line.limit_dbc) for line in at_output if line.limit_dbc is not None]
+    limits = _limits(plan, index)
     asked = [level.level_dbc for level in (*allowed, *limits) if math.isfinite(level.level_dbc)]
     floor = min(_LEAST_FLOOR_DBC, 10.0 * math.floor(min(asked, default=0.0) / 10.0 - 2.0))
 

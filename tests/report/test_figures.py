@@ -60,8 +60,8 @@ def test_comb_shows_what_the_budget_allows():
 
 
 def test_comb_of_the_last_stage_shows_the_output_limit_and_no_other_does():
-    assert drawn(comb_axes(2), "output limit") == [(60.0, -50.0), (100.0, -50.0), (140.0, -50.0)]
-    assert "output limit" not in legend(comb_axes(0))
+    assert drawn(comb_axes(2), "limit") == [(60.0, -50.0), (100.0, -50.0), (140.0, -50.0)]
+    assert "limit" not in legend(comb_axes(0))
 
 
 def test_comb_has_units_on_both_axes_and_names_its_lines():
