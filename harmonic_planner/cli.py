@@ -18,14 +18,18 @@ from collections.abc import Callable, Iterator, Sequence
 from contextlib import contextmanager, suppress
 from pathlib import Path
 from types import FrameType
-from typing import Annotated
+from typing import TYPE_CHECKING, Annotated
 
 import typer
 
 from harmonic_planner import __version__
-from harmonic_planner.export import folder
-from harmonic_planner.export.folder import OutputRefusedError, OutputWriteError
-from harmonic_planner.model import Plan, PlannerError
+from harmonic_planner.export import folder, new_file
+from harmonic_planner.export.folder import OutputWriteError
+from harmonic_planner.export.proposals import numbered_proposals
+from harmonic_planner.model import PlannerError, Scenario
+
+if TYPE_CHECKING:
+    from harmonic_planner.planning.plan import WorkedOut
 
 PROGRAM = "harmonic-planner"
 SHIPPED = "glacier-sounder.toml"
@@ -100,12 +104,13 @@ def plan(
     """
     path = shipped_scenario() if scenario is None else scenario
     target = Path(f"{path.stem}-plan") if out is None else out
-    result = _planned(path, before_planning=lambda: folder.check(target))
+    worked = _planned(path, before_planning=lambda: folder.check(target))
+    result = worked.plan
 
     from harmonic_planner.report import terminal
     from harmonic_planner.report.files import plan_files
 
-    files = plan_files(result)
+    files = plan_files(worked)
     folder.write(target, files)
     screen = terminal.console()
     terminal.show_plan(result, screen)
@@ -118,7 +123,7 @@ def lines(
     scenario: Annotated[Path, typer.Argument(metavar="SCENARIO", show_default=False, help="Scenario file (TOML).")],
 ) -> int:
     """Show every line at every node of the planned chain."""
-    result = _planned(scenario)
+    result = _planned(scenario).plan
 
     from harmonic_planner.report import terminal
 
@@ -147,31 +152,72 @@ def new(
     """
     from harmonic_planner.scenario import TEMPLATE
 
-    try:
-        with file.open("x", encoding="utf-8", newline="\n") as stream:
-            try:
-                stream.write(TEMPLATE)
-                stream.flush()
-            except BaseException:
-                file.unlink()
-                raise
-    except FileExistsError:
-        raise OutputRefusedError(f"new {file}: exists already; name a file that does not") from None
-    except OSError as fault:
-        raise OutputWriteError(f"new {file}: cannot be written: {fault.strerror or fault}") from fault
+    new_file.write(file, TEMPLATE)
     typer.echo(f"Wrote {file}. Plan it with: {PROGRAM} plan {file}")
     return 0
 
 
-def _planned(path: Path, before_planning: Callable[[], None] = lambda: None) -> Plan:
+@app.command(epilog=_example("apply chain.toml 1", "apply chain.toml 2 --out wider.toml"))
+def apply(
+    scenario: Annotated[Path, typer.Argument(metavar="SCENARIO", show_default=False, help="Scenario file (TOML).")],
+    number: Annotated[
+        int, typer.Argument(metavar="N", show_default=False, help="Number of the proposal, as `plan` shows it.")
+    ],
+    out: Annotated[
+        Path | None,
+        typer.Option(
+            "--out",
+            metavar="FILE",
+            show_default=False,
+            help="Scenario file to be written. Default: the scenario's name with -N, in the current folder.",
+        ),
+    ] = None,
+) -> int:
+    """Write a new scenario with one proposal of the plan taken.
+
+    The scenario is planned again, and its text kept but for the keys of the stage concerned. A file that exists is left
+    alone.
+    """
+    from harmonic_planner.applying import apply_proposal, changes, moved
+    from harmonic_planner.scenario import loads, read_text
+
+    target = Path(f"{scenario.stem}-{number}.toml") if out is None else out
+    text = read_text(scenario)
+    loaded = loads(text, path=scenario)
+    new_file.check(target)
+    proposals = numbered_proposals(_worked_out(loaded, scenario).plan)
+    if not proposals:
+        raise PlannerError(f"N = {number}: {scenario} has no proposal; `{PROGRAM} plan` says why")
+    if not 1 <= number <= len(proposals):
+        raise PlannerError(f"N = {number}: must be the number of a proposal for {scenario}, 1 to {len(proposals)}")
+    chosen = proposals[number - 1]
+    taken = apply_proposal(text, chosen.stage_index, chosen.proposal)
+    result = moved(taken, from_folder=scenario.parent, to_folder=target.parent)
+    loads(result, path=target)
+    new_file.write(target, result)
+    stage = loaded.stages[chosen.stage_index].name
+    typer.echo(f"Proposal {number}, for stage {chosen.stage_index + 1}, {stage}: {chosen.proposal.change}")
+    for change in changes(text, taken, chosen.stage_index):
+        typer.echo(f"  {change}")
+    typer.echo(f"Wrote {target}. Plan it with: {PROGRAM} plan {target}")
+    return 0
+
+
+def _planned(path: Path, before_planning: Callable[[], None] = lambda: None) -> "WorkedOut":
     """Load a scenario and plan it; `before_planning` may raise once the scenario is known to be good."""
-    from harmonic_planner.planning.plan import make_plan
     from harmonic_planner.scenario import load
 
     scenario = load(path)
     before_planning()
+    return _worked_out(scenario, path)
+
+
+def _worked_out(scenario: Scenario, path: Path) -> "WorkedOut":
+    """Plan the scenario of a file, which is named where that fails."""
+    from harmonic_planner.planning.plan import work_out
+
     try:
-        return make_plan(scenario)
+        return work_out(scenario)
     except PlannerError as fault:
         raise PlannerError(f"{path}: {fault}") from fault
 

@@ -90,8 +90,8 @@ class Design:
     """What a stage's filter is designed to; `[design]` with the stage's own overrides merged in."""
 
     impedance_ohm: float = 50.0
-    kit: str = "chip-0603"
-    """Name of a shipped kit, or the path of the user's own."""
+    kits: tuple[str, ...] = ("chip-0603",)
+    """Names of shipped kits, or paths of the user's own; the first is preferred."""
     families: tuple[Family, ...] = ("butterworth", "chebyshev")
     ripple_db: float = 0.1
     max_order: int = 9
@@ -110,6 +110,14 @@ class Design:
     """Fraction of the centre; None takes the floor from kit and tolerance."""
     topology: tuple[str, ...] = ("auto",)
     tuned: bool = False
+    order: int | None = None
+    """Fixes the filter's order."""
+    bandwidth: float | None = None
+    """Fixes the filter's bandwidth, a fraction of the centre."""
+    resonator_h: float | None = None
+    """Fixes the inductance of coupled resonators [H]."""
+    resonator_f: float | None = None
+    """Fixes the capacitance of inductively coupled resonators [F]."""
 
 
 @dataclass(frozen=True)
@@ -271,6 +279,14 @@ class ElementReport:
     stray_share: float
     verdict: ElementVerdict
     reason: str
+    bought: tuple[float, ...] = ()
+    """Values to buy, two where parts stand in parallel."""
+    peak_v: float | None = None
+    """Largest peak voltage across the part at the stage's power [V]."""
+    rms_a: float | None = None
+    """Largest current through it [A rms]."""
+    rated_v: float | None = None
+    rated_a: float | None = None
 
 
 @dataclass(frozen=True)
@@ -291,6 +307,12 @@ class Proposal:
     loss_db: float
     buildable: bool
     """No element swamped."""
+    kit: str = ""
+    impedance_ohm: float = 50.0
+    resonator: float | None = None
+    """Free inductance [H] or capacitance [F] of coupled resonators."""
+    price: str = ""
+    """What it costs, in words."""
 
 
 @dataclass(frozen=True)
@@ -309,6 +331,13 @@ class FilterPlan:
     return_loss_db: float | None = None
     """Worst over the carrier's span and drift, as built [dB]."""
     unloaded_q: float | None = None
+    kit: str | None = None
+    impedance_ohm: float | None = None
+    resonator: float | None = None
+    """Free inductance [H] or capacitance [F] of coupled resonators."""
+    netlist: str | None = None
+    touchstone: str | None = None
+    """Names of the files in the plan's folder."""
     reason: str = ""
     """Why this filter, or why none, in words."""
     requirement: tuple[Requirement, ...] = ()
@@ -350,6 +379,20 @@ class OutputPlan:
 
 
 @dataclass(frozen=True)
+class AllocationPlan:
+    """How many resonators all stages need together."""
+
+    total: int
+    """Resonators of the planned filters; a low-pass or high-pass counts half its parts."""
+    lower_bound: int
+    """What no choice among the candidates gets below."""
+    proven: bool
+    """The total is that bound."""
+    nodes: int
+    """Partial choices the search looked at."""
+
+
+@dataclass(frozen=True)
 class Plan:
     """The whole answer; `plan.json` has these keys."""
 
@@ -369,6 +412,7 @@ class Plan:
     source_lines: tuple[LineLevel, ...]
     output: OutputPlan
     stages: tuple[StagePlan, ...]
+    allocation: AllocationPlan | None = None
 
     @property
     def exit_status(self) -> int:

@@ -10,7 +10,7 @@ from __future__ import annotations
 import math
 import re
 from dataclasses import dataclass, replace
-from typing import Any
+from typing import Any, Literal
 
 from quantiphy import Quantity
 
@@ -18,6 +18,13 @@ from harmonic_planner.rules import RefusedError, Rule, inside, range_text
 
 _NUMBER = r"[+\-−]?(?:[0-9]+\.?[0-9]*|\.[0-9]+)(?:[eE][+\-]?[0-9]+)?"
 _SPLIT = re.compile(rf"\s*({_NUMBER})\s*(.*?)\s*", re.DOTALL)
+
+
+def _number(digits: str, unit: str) -> float:
+    """Return the number with its prefix put in; behind an exponent, as in 1e3 MHz, quantiphy would not see one."""
+    if "e" in digits.lower():
+        return float(Quantity(digits)) * float(Quantity(f"1 {unit}"))
+    return float(Quantity(f"{digits} {unit}"))
 
 
 @dataclass(frozen=True)
@@ -41,12 +48,15 @@ class Kind(Rule):
     """`high` itself is excluded."""
     prefixes: tuple[str, ...] = ()
     aliases: tuple[str, ...] = ()
+    prefix_aliases: tuple[str, ...] = ()
+    """Other spellings of a prefix, read but not named in a message."""
     divisor: float = 1.0
 
     @property
     def units(self) -> tuple[str, ...]:
         """Every spelling of the unit that is allowed, with its prefixes."""
-        return tuple(p + u for u in (self.unit, *self.aliases) for p in ("", *self.prefixes))
+        prefixes = ("", *self.prefixes, *self.prefix_aliases)
+        return tuple(p + u for u in (self.unit, *self.aliases) for p in prefixes)
 
     @property
     def allowed(self) -> str:
@@ -103,7 +113,7 @@ class Kind(Rule):
         if unit not in self.units:
             known = self.units[: 1 + len(self.prefixes)]
             raise self.refuse(f'the unit "{unit}" is not {" or ".join(known)}, upper and lower case count')
-        number = float(Quantity(f"{digits} {unit}"))
+        number = _number(digits, unit)
         if not math.isfinite(number) or not inside(number, self.low, self.high, above=self.above, below=self.below):
             raise self.refuse()
         return number / self.divisor
@@ -113,8 +123,10 @@ class Kind(Rule):
         return self._written(value * self.divisor)
 
     def _written(self, number: float) -> str:
-        if self.prefixes and abs(number) >= 1:  # below 1 it would write a prefix that is not read, as in mHz
-            return str(Quantity(number, self.unit).render(prec="full"))
+        if self.prefixes:
+            text = str(Quantity(number, self.unit).render(prec="full"))
+            if text.rpartition(" ")[2] in self.units:  # and not with a prefix that is not read, as in mHz
+                return text
         return f"{number:.12g} {self.unit}"
 
     def schema(self) -> dict[str, Any]:
@@ -233,10 +245,54 @@ class WidthRule(Rule):
         return {"anyOf": [self.absolute.schema(), self.share.schema()]}
 
 
+@dataclass(frozen=True)
+class Reactance:
+    """The value of a resonator's free element: an inductance [H] or a capacitance [F]."""
+
+    value: float
+    unit: Literal["H", "F"]
+
+
+@dataclass(frozen=True)
+class ReactanceRule(Rule):
+    """An inductance or a capacitance, told apart by the unit."""
+
+    inductance: Kind
+    capacitance: Kind
+
+    @property
+    def allowed(self) -> str:
+        """Words that follow "must be"."""
+        return f"{self.inductance.allowed}, or {self.capacitance.allowed}"
+
+    def parse(self, value: object) -> Reactance:
+        """Read the value, in SI."""
+        farad = isinstance(value, str) and value.rstrip()[-1:] in ("F", "f")  # "6 pf" is a misspelt capacitance
+        try:
+            if farad:
+                return Reactance(self.capacitance.parse(value), "F")
+            return Reactance(self.inductance.parse(value), "H")
+        except RefusedError as error:
+            raise self.refuse(error.reason) from None
+
+    def write(self, reactance: Reactance) -> str:
+        """Write the value as text with its unit."""
+        return (self.inductance if reactance.unit == "H" else self.capacitance).write(reactance.value)
+
+    def schema(self) -> dict[str, Any]:
+        """Return the JSON Schema of it."""
+        return {"anyOf": [self.inductance.schema(), self.capacitance.schema()]}
+
+
 _HERTZ = ("k", "M", "G", "T")
+_MICRO = ("u", "\u03bc")
+"""The letter that stands for it, and the Greek one; messages show the micro sign."""
 FREQUENCY = Kind("a frequency", "Hz", "600 MHz", 1e3, 1e12, prefixes=_HERTZ)
 OFFSET = Kind("an offset", "Hz", "10 kHz", 0.0, 1e10, above=True, prefixes=_HERTZ)
 RESISTANCE = Kind("a resistance", "ohm", "50 ohm", 1.0, 1e3, prefixes=("k",), aliases=("Ω", "\u2126"))
+INDUCTANCE = Kind("an inductance", "H", "8 nH", 1e-11, 0.1, prefixes=("p", "n", "\u00b5", "m"), prefix_aliases=_MICRO)
+CAPACITANCE = Kind("a capacitance", "F", "6 pF", 1e-14, 1e-4, prefixes=("f", "p", "n", "\u00b5"), prefix_aliases=_MICRO)
+REACTANCE = ReactanceRule(INDUCTANCE, CAPACITANCE)
 LEVEL_DBM = Kind("a level", "dBm", "10 dBm", -150.0, 80.0)
 LINE_DBC = Kind("a level", "dBc", "-60 dBc", -250.0, 0.0, below=True)
 RATIO_DB = Kind("a ratio", "dB", "3 dB", 0.0, 60.0)

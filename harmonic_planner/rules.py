@@ -136,6 +136,33 @@ class Text(Rule):
 
 
 @dataclass(frozen=True)
+class Names(Rule):
+    """One line of text, or a list of such, each at most once."""
+
+    text: Text
+
+    @property
+    def allowed(self) -> str:
+        """Words that follow "must be"."""
+        return f"{self.text.allowed}, or a list of such, each at most once"
+
+    def parse(self, value: object) -> tuple[str, ...]:
+        """Read the value; one name alone is a list of one."""
+        try:
+            names = tuple(self.text.parse(name) for name in (value if isinstance(value, list) else [value]))
+        except RefusedError as error:
+            raise self.refuse(error.reason) from None
+        if not names or len(set(names)) != len(names):
+            raise self.refuse()
+        return names
+
+    def schema(self) -> dict[str, Any]:
+        """Return the JSON Schema of it."""
+        one = self.text.schema()
+        return {"anyOf": [one, {"type": "array", "items": one, "minItems": 1, "uniqueItems": True}]}
+
+
+@dataclass(frozen=True)
 class Choice(Rule):
     """One of some words."""
 

@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import math
 import tomllib
-from collections.abc import Iterator, Mapping
 from pathlib import Path
 from typing import Any
 
@@ -23,7 +22,8 @@ from harmonic_planner.model import (
     Source,
     Stage,
 )
-from harmonic_planner.scenario_checks import SHAPE_KEYS, design_value, joint_problems, parts_of, stage_name
+from harmonic_planner.scenario_checks import design_value, joint_problems, parts_of, stage_name
+from harmonic_planner.scenario_defaults import half_angle_deg, listed_defaults
 from harmonic_planner.scenario_problems import Problem, key_problems
 from harmonic_planner.scenario_tables import (
     AmplifierTable,
@@ -31,18 +31,14 @@ from harmonic_planner.scenario_tables import (
     DeviceTable,
     Document,
     FilterTable,
-    SourceTable,
     StageTable,
 )
 from harmonic_planner.template import TEMPLATE
 
-__all__ = ["TEMPLATE", "ScenarioError", "json_schema", "load", "loads"]
+__all__ = ["TEMPLATE", "ScenarioError", "json_schema", "load", "loads", "read_text"]
 
 LARGEST_FILE = 1_000_000
 """Bytes of the longest scenario file that is read."""
-
-HALF_ANGLES_DEG: Mapping[int, float] = {2: 70.0, 3: 50.0}
-"""Conduction half-angle by factor where none is given (memory); 120/N deg for the others."""
 
 
 class ScenarioError(PlannerError):
@@ -83,6 +79,26 @@ def load(path: Path) -> Scenario:
     ScenarioError
         With every problem found, one line each.
     """
+    return loads(read_text(path), path=path)
+
+
+def read_text(path: Path) -> str:
+    """Read the text of a scenario file, its line ends as they are.
+
+    Parameters
+    ----------
+    path : pathlib.Path
+        A file in UTF-8, with or without a byte-order mark.
+
+    Returns
+    -------
+    str
+
+    Raises
+    ------
+    ScenarioError
+        Where there is no such file, or it is not text.
+    """
     try:
         if path.is_dir():
             raise ScenarioError(path, ("is a folder; name a scenario file in TOML",))
@@ -96,12 +112,11 @@ def load(path: Path) -> Scenario:
     if len(data) > LARGEST_FILE:
         raise ScenarioError(path, (f"is longer than {LARGEST_FILE} bytes, which no scenario is",))
     try:
-        text = data.decode("utf-8-sig")
+        return data.decode("utf-8-sig")
     except UnicodeDecodeError as error:
         line = data.count(b"\n", 0, error.start) + 1
         problem = f"is not UTF-8 text: byte 0x{data[error.start]:02x} in line {line}; save it as UTF-8"
         raise ScenarioError(path, (problem,)) from None
-    return loads(text, path=path)
 
 
 def loads(text: str, *, path: Path) -> Scenario:
@@ -193,7 +208,7 @@ def _scenario(document: Document, path: Path) -> Scenario:
         ),
         design=_design(document.design),
         stages=tuple(_stage(i, stage, document.design) for i, stage in enumerate(document.stage)),
-        defaults=tuple(_defaults(document)),
+        defaults=tuple(listed_defaults(document)),
         folder=path.parent,
     )
 
@@ -203,10 +218,10 @@ def _design(table: DesignTable, stage: StageTable | None = None) -> Design:
     values = {name: getattr(table, name) for name in DesignTable.model_fields}
     if stage is not None:
         values |= {name: design_value(name, table, stage) for name in DesignTable.model_fields}
-    isolation = values["isolation"]
+    isolation, resonator = values["isolation"], values["resonator"]
     return Design(
         impedance_ohm=values["impedance"],
-        kit=values["kit"],
+        kits=values["kit"],
         families=values["families"],
         ripple_db=values["ripple"],
         max_order=values["max_order"],
@@ -222,6 +237,10 @@ def _design(table: DesignTable, stage: StageTable | None = None) -> Design:
         min_bandwidth=values["min_bandwidth"],
         topology=values["topology"],
         tuned=values["tuned"],
+        order=values["order"],
+        bandwidth=values["bandwidth"],
+        resonator_h=resonator.value if resonator is not None and resonator.unit == "H" else None,
+        resonator_f=resonator.value if resonator is not None and resonator.unit == "F" else None,
     )
 
 
@@ -240,12 +259,8 @@ def _stage(i: int, table: StageTable, design: DesignTable) -> Stage:
     )
 
 
-def _half_angle_deg(times: int) -> float:
-    return HALF_ANGLES_DEG.get(times, 120.0 / times)
-
-
 def _device(table: DeviceTable, times: int) -> Device:
-    half_angle_rad = table.half_angle if table.half_angle is not None else math.radians(_half_angle_deg(times))
+    half_angle_rad = table.half_angle if table.half_angle is not None else math.radians(half_angle_deg(times))
     return Device(
         type=table.type,
         conversion_db=table.conversion if table.conversion is not None else 0.0,
@@ -279,94 +294,3 @@ def _given(table: FilterTable, design: Design) -> GivenFilter:
         topology=table.topology,
         unloaded_q=table.unloaded_q,
     )
-
-
-# ------------------------------------------------------------------------------------------------------- defaults
-
-_DESIGN_WORDS: Mapping[str, str] = {
-    "families": " = butterworth and chebyshev",
-    "isolation": " = 75 dB to 1 GHz, 20 dB a decade less above",
-    "reflection": ": the neighbour's own",
-    "termination": ": by pad, 3 dB without one, 1.5 dB with 3 dB, 1 dB with 6 dB",
-    "unloaded_q": ": from kit and topology",
-    "tuned": " = false",
-}
-"""Design keys whose default is not one text to write."""
-
-
-def _written(table: type[DesignTable | DeviceTable | AmplifierTable | SourceTable], name: str) -> str:
-    return f" = {table.model_fields[name].default}"
-
-
-def _defaults(document: Document) -> Iterator[str]:
-    """List every default that shaped the scenario, in the order of the file."""
-    source = document.source.model_fields_set
-    if "level" not in source:
-        yield "source.level" + _written(SourceTable, "level")
-    if "lines" not in source:
-        yield "source.lines: none given; a real source has harmonics"
-    if "phase_noise" not in source:
-        yield "source.phase_noise: none given, none reported"
-    if document.output.level is None:
-        yield "output.level: none asked for"
-    for name in DesignTable.model_fields:
-        everywhere = all(name in stage.model_fields_set for stage in document.stage)
-        if name not in document.design.model_fields_set and not everywhere:
-            yield f"design.{name}" + _DESIGN_WORDS.get(name, _written(DesignTable, name))
-    for i, stage in enumerate(document.stage):
-        place = f"stage[{i + 1}]"
-        yield from _stage_defaults(place, stage, document.design)
-
-
-def _stage_defaults(place: str, stage: StageTable, design: DesignTable) -> Iterator[str]:
-    if stage.device is not None:
-        own_reflection = design_value("reflection", design, stage) is None
-        yield from _device_defaults(f"{place}.device", stage.device, stage.times, own_reflection=own_reflection)
-    for name in ("pad", "pad_after", "limit", "amplifier"):
-        if name not in stage.model_fields_set:
-            yield f"{place}.{name}: none"
-    if "filter" not in stage.model_fields_set:
-        yield f"{place}.filter = plan"
-    if isinstance(stage.filter, FilterTable):
-        given = stage.filter
-        if given.ripple is None and given.family == "chebyshev":
-            yield f"{place}.filter.ripple = {design_value('ripple', design, stage):g} dB"
-        if given.topology is None:
-            yield f"{place}.filter.topology: none, the prototype's own response"
-        if given.unloaded_q is None and given.topology is None:
-            yield f"{place}.filter.unloaded_q: lossless"
-    if stage.amplifier is not None:
-        own_reflection = design_value("reflection", design, stage) is None
-        yield from _amplifier_defaults(f"{place}.amplifier", stage.amplifier, own_reflection=own_reflection)
-
-
-def _device_defaults(place: str, device: DeviceTable, times: int, *, own_reflection: bool) -> Iterator[str]:
-    absent = DeviceTable.model_fields.keys() - device.model_fields_set
-    words = {
-        "half_angle": f" = {_half_angle_deg(times):.4g} deg",
-        "balance": _written(DeviceTable, "balance"),
-        "steepness": _written(DeviceTable, "steepness"),
-    }
-    if "conversion" in absent:
-        yield f"{place}.conversion = 0 dB"
-    for name, types in SHAPE_KEYS.items():
-        if name in absent and device.type in types:
-            yield f"{place}.{name}{words[name]}"
-    if "class_" in absent:
-        yield f"{place}.class" + _written(DeviceTable, "class_")
-    if "drive" in absent:
-        yield f"{place}.drive: no window, none checked; the planned level is nominal"
-    if "lines" in absent:
-        yield f"{place}.lines: those of the waveform"
-    if "reflection" in absent and own_reflection:
-        yield f"{place}.reflection" + _written(DeviceTable, "reflection")
-
-
-def _amplifier_defaults(place: str, amplifier: AmplifierTable, *, own_reflection: bool) -> Iterator[str]:
-    absent = AmplifierTable.model_fields.keys() - amplifier.model_fields_set
-    words = {"saturation": "none, linear", "noise_figure": "not counted", "lines": "none given"}
-    for name, text in words.items():
-        if name in absent:
-            yield f"{place}.{name}: {text}"
-    if "reflection" in absent and own_reflection:
-        yield f"{place}.reflection" + _written(AmplifierTable, "reflection")

@@ -1,4 +1,4 @@
-"""What the keys of a scenario may hold together: limits, devices, factors, names."""
+"""What the keys of a scenario may hold together: limits, devices, filters, kits, factors, names."""
 
 from __future__ import annotations
 
@@ -10,9 +10,11 @@ from typing import Any, TypeVar
 
 from pydantic import ValidationError
 
+from harmonic_planner.filters import topologies
 from harmonic_planner.model import DeviceType
 from harmonic_planner.parts.kit_files import KitError
 from harmonic_planner.parts.kits import kit_names, load_kit
+from harmonic_planner.quantities import PERCENT, Reactance
 from harmonic_planner.rules import nearest
 from harmonic_planner.scenario_problems import SHAPES, Location, Problem
 from harmonic_planner.scenario_tables import (
@@ -30,6 +32,9 @@ MOST_STAGES = 12
 LARGEST_TOTAL = 1024
 """Largest product of all factors and the common denominator of the source's lines;
 lines are followed to four times that, and a conversion matrix has their number squared."""
+
+_ROUNDING = 1e-9
+"""Of two percentages that were written alike, relative."""
 
 T = TypeVar("T", bound=Table)
 
@@ -99,9 +104,10 @@ def joint_problems(raw: Mapping[str, Any], parts: Parts, *, folder: Path) -> Ite
         if stage is not None:
             yield from _device_problems(i, stage)
             yield from _filter_problems(i, stage)
-            if parts.design is not None:
+            if parts.design is not None and stage.filter == "plan":
                 yield from _flatness_problems(i, stage, parts.design)
-    yield from _kit_problems(parts, folder)
+                yield from _fixed_problems(i, stage, parts.design)
+    yield from _kit_problems(raw, parts, folder)
     yield from _chain_problems(raw, parts)
     yield from _name_problems(raw)
 
@@ -160,36 +166,74 @@ def _filter_problems(i: int, stage: StageTable) -> Iterator[Problem]:
 
 
 def _flatness_problems(i: int, stage: StageTable, design: DesignTable) -> Iterator[Problem]:
-    if stage.filter != "plan" or "chebyshev" not in design_value("families", design, stage):
-        return
     flatness, ripple = (design_value(key, design, stage) for key in ("flatness", "ripple"))
-    if flatness >= ripple:
+    if "chebyshev" not in design_value("families", design, stage) or flatness >= ripple:
         return
-    owners: tuple[tuple[Location, DesignTable], ...] = ((("stage", i), stage), (("design",), design))
     texts = {
         "flatness": f"must be at least the ripple, {ripple:g} dB",
         "ripple": f"must be at most the flatness, {flatness:g} dB",
     }
+    yield _conflict(i, stage, design, texts)
+
+
+def _fixed_problems(i: int, stage: StageTable, design: DesignTable) -> Iterator[Problem]:
+    """Check what the user fixes against the limits that the user sets."""
+    order, most = (design_value(key, design, stage) for key in ("order", "max_order"))
+    if order is not None and order > most:
+        texts = {"order": f"must be at most max_order, {most}", "max_order": f"must be at least the order, {order}"}
+        yield _conflict(i, stage, design, texts)
+    bandwidth, least = (design_value(key, design, stage) for key in ("bandwidth", "min_bandwidth"))
+    if bandwidth is not None and least is not None and bandwidth < least * (1 - _ROUNDING):
+        texts = {
+            "bandwidth": f"must be at least min_bandwidth, {PERCENT.write(least)}",
+            "min_bandwidth": f"must be at most the bandwidth, {PERCENT.write(bandwidth)}",
+        }
+        yield _conflict(i, stage, design, texts)
+    resonator, names = (design_value(key, design, stage) for key in ("resonator", "topology"))
+    if isinstance(resonator, Reactance) and names != ("auto",):
+        part, noun = ("L", "inductance") if resonator.unit == "H" else ("C", "capacitance")
+        if all(topologies.REGISTRY[name].free != part for name in topologies.expand(names)):
+            listed = " and ".join(names)
+            texts = {
+                "resonator": f"must be left out for {listed}: the {noun} of its resonators is not free",
+                "topology": f'must name a circuit that leaves the {noun} of resonators free, or resonator be "auto"',
+            }
+            yield _conflict(i, stage, design, texts)
+
+
+def _conflict(i: int, stage: StageTable, design: DesignTable, texts: Mapping[str, str]) -> Problem:
+    """Blame the first of some keys that was written, the stage's own before those of [design].
+
+    There always is one: the defaults agree with each other.
+    """
+    owners: tuple[tuple[Location, DesignTable], ...] = ((("stage", i), stage), (("design",), design))
     written = [(place, key) for place, table in owners for key in texts if key in table.model_fields_set]
-    place, key = written[0]  # never empty: the defaults agree with each other
-    yield Problem((*place, key), texts[key])
+    place, key = written[0]
+    return Problem((*place, key), texts[key])
 
 
-def _kit_problems(parts: Parts, folder: Path) -> Iterator[Problem]:
-    places: list[tuple[Location, DesignTable | None]] = [(("design",), parts.design)]
-    places += [(("stage", i), stage) for i, stage in enumerate(parts.stages)]
+def _kit_problems(raw: Mapping[str, Any], parts: Parts, folder: Path) -> Iterator[Problem]:
+    if parts.design is not None:
+        yield from _kits_not_found(("design",), parts.design, raw.get("design", {}), folder)
+    for i, stage in enumerate(parts.stages):
+        if stage is not None:
+            yield from _kits_not_found(("stage", i), stage, raw["stage"][i], folder)
+
+
+def _kits_not_found(place: Location, table: DesignTable, raw: Mapping[str, Any], folder: Path) -> Iterator[Problem]:
     shipped = kit_names()
-    for place, table in places:
-        if table is None or "kit" not in table.model_fields_set or table.kit in shipped:
+    allowed = ", ".join(f'"{name}"' for name in shipped)
+    for j, name in enumerate(table.kit if "kit" in table.model_fields_set else ()):
+        if name in shipped:
             continue
+        where: Location = (*place, "kit", j) if isinstance(raw["kit"], list) else (*place, "kit")
         try:
-            load_kit(table.kit, folder)
+            load_kit(name, folder)
         except KitError as error:
-            for text in error.problems if (folder / table.kit).exists() else ("not found",):
-                near = nearest(table.kit, shipped) if text == "not found" else None
+            for text in error.problems if (folder / name).exists() else ("not found",):
+                near = nearest(name, shipped) if text == "not found" else None
                 hint = f'; did you mean "{near}"?' if near else f"; {text}"
-                allowed = ", ".join(f'"{name}"' for name in shipped)
-                yield Problem((*place, "kit"), f"must be {allowed} or the path of a kit file{hint}")
+                yield Problem(where, f"must be {allowed} or the path of a kit file{hint}")
 
 
 def _chain_problems(raw: Mapping[str, Any], parts: Parts) -> Iterator[Problem]:

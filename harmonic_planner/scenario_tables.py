@@ -24,14 +24,16 @@ from harmonic_planner.quantities import (
     OFFSET,
     PERCENT,
     RATIO_DB,
+    REACTANCE,
     RESISTANCE,
     Either,
     Kind,
     Pair,
+    Reactance,
     Width,
     WidthRule,
 )
-from harmonic_planner.rules import Choice, Flag, Number, Rule, Several, Text, nearest
+from harmonic_planner.rules import Choice, Flag, Names, Number, Rule, Several, Text, nearest
 
 LAST_LINE = 100
 LARGEST_FACTOR = 12
@@ -128,6 +130,7 @@ RIPPLE = RATIO_DB.between(0.01, 0.5, example="0.1 dB")
 REFLECTION = Number(0, 1, below=True)
 QUALITY = Number(1, 1e6)
 ORDER = Number(1, 9, whole=True)
+SHARE = PERCENT.between(0, 100, above=True)
 LIMIT = LINE_DBC.between(-250, 0, below=True, example="-60 dBc")
 SOURCE_LINE = LineKey(fractions=True, first=1)
 DEVICE_LINE = LineKey(fractions=False, first=1)
@@ -200,14 +203,22 @@ class DesignTable(Table):
     """What the filters are designed to."""
 
     impedance: Annotated[float, RESISTANCE] = _default("50 ohm", "Impedance between which the filters work")
-    kit: Annotated[str, Text("the name of a kit or of a kit file", 200)] = _default(
-        "chip-0603", "Parts to build from: a shipped kit, or a kit file ending in .toml, relative to the scenario"
+    kit: Annotated[tuple[str, ...], Names(Text("the name of a kit or of a kit file", 200))] = _default(
+        "chip-0603",
+        "Parts to build from: a shipped kit, a kit file ending in .toml, relative to the scenario, "
+        "or a list of these, the preferred one first",
     )
     families: Annotated[tuple[Family, ...], Several(Choice(get_args(Family)))] = _default(
         ["butterworth", "chebyshev"], "Filter families to choose from"
     )
     ripple: Annotated[float, RIPPLE] = _default("0.1 dB", "Passband ripple of the Chebyshev filters")
     max_order: Annotated[int, ORDER] = _default(9, "Most resonators in one filter")
+    order: Annotated[int | None, Either("auto", None, ORDER)] = _default(
+        "auto", 'Resonators in the filter, at most max_order, or "auto": the fewest that do'
+    )
+    bandwidth: Annotated[float | None, Either("auto", None, SHARE)] = _default(
+        "auto", 'Bandwidth as a share of the centre, or "auto": what every line and the parts allow'
+    )
     flatness: Annotated[float, RATIO_DB.between(0.01, 6, example="1 dB")] = _default(
         "1 dB", "Loss at the worst point of span and drift, less the midband loss, at most"
     )
@@ -231,11 +242,14 @@ class DesignTable(Table):
         "Spread of conversion into a reflective load; default: 3 dB without a pad, 1.5 dB with 3 dB, 1 dB with 6 dB"
     )
     unloaded_q: Annotated[float | None, QUALITY] = _maybe("Unloaded Q of a resonator; default: from kit and topology")
-    min_bandwidth: Annotated[float | None, Either("kit", None, PERCENT.between(0, 100, above=True))] = _default(
+    min_bandwidth: Annotated[float | None, Either("kit", None, SHARE)] = _default(
         "kit", 'Narrowest bandwidth as a share of the centre, or "kit": from kit and tolerance'
     )
     topology: Annotated[tuple[str, ...], TopologyRule(several=True)] = _default(
         "auto", 'Circuit to build: "auto", a name, or a list of names'
+    )
+    resonator: Annotated[Reactance | None, Either("auto", None, REACTANCE)] = _default(
+        "auto", 'Inductance or capacitance of coupled resonators, whichever their circuit leaves free, or "auto"'
     )
     tuned: Annotated[bool, Flag()] = _default(False, "Resonators are adjusted on the bench")
 
@@ -286,9 +300,9 @@ class FilterTable(Table):
     family: Annotated[Family, Choice(get_args(Family))] = _need("Filter family")
     order: Annotated[int, ORDER] = _need("Number of resonators")
     centre: Annotated[float, FREQUENCY] = _need("Centre frequency")
-    bandwidth: Annotated[
-        Width, WidthRule(FREQUENCY.between(1, 1e12, example="60 MHz"), PERCENT.between(0, 100, above=True))
-    ] = _need("Bandwidth, 3 dB for Butterworth and ripple for Chebyshev: a frequency or a share of the centre")
+    bandwidth: Annotated[Width, WidthRule(FREQUENCY.between(1, 1e12, example="60 MHz"), SHARE)] = _need(
+        "Bandwidth, 3 dB for Butterworth and ripple for Chebyshev: a frequency or a share of the centre"
+    )
     ripple: Annotated[float | None, RIPPLE] = _maybe("Passband ripple of Chebyshev; default: the stage's design ripple")
     topology: Annotated[str | None, TopologyRule(several=False)] = _maybe(
         "Circuit, built from the stage's kit with its strays; default: none, the prototype itself"

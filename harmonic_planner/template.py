@@ -27,7 +27,7 @@ limit = "-50 dBc"
 
 # What every filter is designed to; a stage may carry any of these keys for itself.
 [design]
-# Parts to build from: "chip-0603", "chip-1008", or a kit file of your own.
+# Parts to build from: a shipped kit, a kit file of your own, or a list of these, the preferred one first.
 kit = "chip-1008"
 # Impedance between which the filters work.
 impedance = "50 ohm"
@@ -37,6 +37,8 @@ families = ["butterworth", "chebyshev"]
 ripple = "0.1 dB"
 # Most resonators in one filter.
 max_order = 9
+# Number of resonators where it is fixed; without it the fewest that do.
+#order = 5
 # Loss at the worst point of span and drift, less the midband loss.
 flatness = "1 dB"
 # Midband loss of one filter, at most.
@@ -51,10 +53,14 @@ phases = "worst-case"
 isolation = "75 dB"
 # Circuit: "auto", a name, or a list of names.
 topology = "auto"
+# Coupled resonators: their inductance where it is fixed, or their capacitance, as in "6 pF".
+#resonator = "100 nH"
 # true where the resonators are adjusted on the bench; narrower filters are then allowed.
 tuned = false
 # Narrowest bandwidth as a share of the centre; without it kit and tolerance decide.
 #min_bandwidth = "15 %"
+# Bandwidth where it is fixed, as a share of the centre; without it what every line and the parts allow.
+#bandwidth = "20 %"
 # Unloaded Q of a resonator; without it kit and topology decide.
 #unloaded_q = 60
 # Reflection factor of whatever faces a filter, 0 for no mismatch allowance; without it each neighbour's own.

@@ -13,7 +13,7 @@ PUSH_PUSH = Device("push-push", -8.0, half_angle_rad=math.radians(70))
 PUSH_PULL = Device("push-pull", -8.0, half_angle_rad=math.radians(50))
 SINGLE = Device("single-ended", -10.0, half_angle_rad=math.radians(60))
 
-DESIGN = Design(kit="chip-1008", drift=0.005, isolation=Isolation(math.inf), families=("butterworth", "chebyshev"))
+DESIGN = Design(kits=("chip-1008",), drift=0.005, isolation=Isolation(math.inf), families=("butterworth", "chebyshev"))
 
 
 def device_for(times: int) -> Device:

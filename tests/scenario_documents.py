@@ -44,10 +44,12 @@ limit = "-70 dBc"
 mask = [{ from = "2.3 GHz", to = "2.5 GHz", limit = "-75 dBc" }]
 [design]
 impedance = "75 Ω"
-kit = "chip-1008"
+kit = ["chip-1008", "air-wound"]
 families = ["chebyshev"]
 ripple = "0.2 dB"
 max_order = 5
+order = 4
+bandwidth = "12.5 %"
 flatness = "0.5 dB"
 loss = "4 dB"
 drift = "2 %"
@@ -59,6 +61,7 @@ termination = "1.5 dB"
 unloaded_q = 100
 min_bandwidth = "10 %"
 topology = ["ladder-shunt"]
+resonator = "auto"
 tuned = true
 [[stage]]
 name = "first"
@@ -70,6 +73,10 @@ impedance = "50 ohm"
 isolation = "none"
 topology = "auto"
 min_bandwidth = "kit"
+kit = "chip-0805"
+order = "auto"
+bandwidth = "auto"
+resonator = "6 pF"
 [stage.device]
 type = "push-push"
 half_angle = "75 deg"

@@ -2,6 +2,7 @@
 
 from scenario_documents import DEVICE, amplifier, device, document, given_filter
 
+from harmonic_planner.filters.topologies import ALIASES, REGISTRY
 from harmonic_planner.parts.kits import kit_names
 
 KITS = ", ".join(f'"{name}"' for name in kit_names())
@@ -71,6 +72,40 @@ REFUSED = {
     "unknown filter": document(stage=f'times = 2\n{DEVICE}\nfilter = "auto"'),
     "given filter, unknown family": given_filter(
         'family = "elliptic", order = 3, centre = "200 MHz", bandwidth = "10 %"'
+    ),
+    "unknown kit in a list": document(design='kit = ["chip-0603", "chip-0406"]'),
+    "unknown kit of a stage": document(stage=f'times = 2\n{DEVICE}\nkit = ["gone.toml"]'),
+    "kit twice": document(design='kit = ["chip-0603", "chip-0603"]'),
+    "no kit": document(design="kit = []"),
+    "number among the kits": document(design='kit = ["chip-0603", 3]'),
+    # what is fixed
+    "fixed order 0": document(design="order = 0"),
+    "fixed order in quotes": document(design='order = "5"'),
+    "fixed bandwidth in hertz": document(design='bandwidth = "60 MHz"'),
+    "fixed bandwidth of zero": document(design='bandwidth = "0 %"'),
+    "fixed bandwidth as a number": document(design="bandwidth = 0.15"),
+    "resonator in ohms": document(design='resonator = "50 ohm"'),
+    "resonator in lower case": document(design='resonator = "6 pf"'),
+    "resonator of zero": document(design='resonator = "0 nH"'),
+    "resonator as a number": document(design="resonator = 8e-9"),
+    "order above max_order": document(design="order = 6\nmax_order = 5"),
+    "order of a stage above max_order": document(design="max_order = 5", stage=f"times = 2\n{DEVICE}\norder = 6"),
+    "max_order of a stage below the order": document(design="order = 6", stage=f"times = 2\n{DEVICE}\nmax_order = 5"),
+    "bandwidth below min_bandwidth": document(
+        design='min_bandwidth = "12 %"', stage=f'times = 2\n{DEVICE}\nbandwidth = "11.9 %"'
+    ),
+    "min_bandwidth of a stage above the bandwidth": document(
+        design='bandwidth = "11.9 %"', stage=f'times = 2\n{DEVICE}\nmin_bandwidth = "12 %"'
+    ),
+    "inductance of a ladder's resonators": document(design='topology = "ladder"\nresonator = "8 nH"'),
+    "capacitance of a ladder's resonators": document(
+        design='topology = ["ladder-shunt", "ladder-series"]', stage=f'times = 2\n{DEVICE}\nresonator = "6 pF"'
+    ),
+    "capacitance of capacitively coupled resonators": document(
+        stage=f'times = 2\n{DEVICE}\ntopology = ["capacitive", "ladder"]\nresonator = "6 pF"'
+    ),
+    "ladder where the inductance is fixed": document(
+        design='resonator = "8 nH"', stage=f'times = 2\n{DEVICE}\ntopology = "ladder"'
     ),
     # lines
     "carrier among the lines": document(source='frequency = "1 MHz"\nlines = { "1" = "-10 dBc" }'),
@@ -147,7 +182,17 @@ DRIVE = (
     'must be two levels ["7 dBm", "13 dBm"], the lower first, each a level from -150 dBm to 80 dBm, such as "10 dBm"'
 )
 FAMILIES = 'must be a list of one or more of "butterworth", "chebyshev", each at most once'
-TOPOLOGY = 'must be "auto", "ladder-series", "ladder-shunt", "ladder", or a list of these names'
+CIRCUITS = ", ".join(f'"{name}"' for name in (*REGISTRY, *ALIASES) if name != "auto")
+TOPOLOGY = f'must be "auto", {CIRCUITS}, or a list of these names'
+KIT = (
+    "must be the name of a kit or of a kit file: one line of text of 1 to 200 characters, or a list of such, "
+    "each at most once"
+)
+SHARE = 'must be "auto" or a percentage above 0 % up to 100 %, such as "10 %"'
+RESONATOR = (
+    'must be "auto" or an inductance from 10 pH to 100 mH, such as "8 nH", '
+    'or a capacitance from 10 fF to 100 uF, such as "6 pF"'
+)
 STAGES = "must be one or more tables, each headed [[stage]] in double brackets"
 SOURCE = 'must be a table: [source] with frequency = "100 MHz"'
 OUTPUT = 'must be a table: [output] with limit = "-60 dBc"'
@@ -230,6 +275,62 @@ EXPECTED = {
     "unknown topology": [f'design.topology = "lader": {TOPOLOGY}; did you mean "ladder"?'],
     "auto in a list": [f'design.topology = ["auto", "ladder"]: {TOPOLOGY}'],
     "unknown kit": [f'design.kit = "chip-0604": must be {KITS} or the path of a kit file; did you mean "chip-0603"?'],
+    "unknown kit in a list": [
+        f'design.kit[2] = "chip-0406": must be {KITS} or the path of a kit file; did you mean "chip-0402"?'
+    ],
+    "unknown kit of a stage": [f'stage[1].kit[1] = "gone.toml": must be {KITS} or the path of a kit file; not found'],
+    "kit twice": [f'design.kit = ["chip-0603", "chip-0603"]: {KIT}'],
+    "no kit": [f"design.kit = []: {KIT}"],
+    "number among the kits": [f'design.kit = ["chip-0603", 3]: {KIT}'],
+    "fixed order 0": ['design.order = 0: must be "auto" or a whole number from 1 to 9'],
+    "fixed order in quotes": [
+        'design.order = "5": must be "auto" or a whole number from 1 to 9; write it without quotes'
+    ],
+    "fixed bandwidth in hertz": [
+        f'design.bandwidth = "60 MHz": {SHARE}; the unit "MHz" is not %, upper and lower case count'
+    ],
+    "fixed bandwidth of zero": [f'design.bandwidth = "0 %": {SHARE}'],
+    "fixed bandwidth as a number": [f"design.bandwidth = 0.15: {SHARE}; {PLAIN}"],
+    "resonator in ohms": [
+        (
+            f'design.resonator = "50 ohm": {RESONATOR}; the unit "ohm" is not H or pH or nH or µH or mH, '
+            "upper and lower case count"
+        )
+    ],
+    "resonator in lower case": [
+        (
+            f'design.resonator = "6 pf": {RESONATOR}; the unit "pf" is not F or fF or pF or nF or µF, '
+            "upper and lower case count"
+        )
+    ],
+    "resonator of zero": [f'design.resonator = "0 nH": {RESONATOR}'],
+    "resonator as a number": [f"design.resonator = 8e-09: {RESONATOR}; {PLAIN}"],
+    "order above max_order": ["design.order = 6: must be at most max_order, 5"],
+    "order of a stage above max_order": ["stage[1].order = 6: must be at most max_order, 5"],
+    "max_order of a stage below the order": ["stage[1].max_order = 5: must be at least the order, 6"],
+    "bandwidth below min_bandwidth": ['stage[1].bandwidth = "11.9 %": must be at least min_bandwidth, 12 %'],
+    "min_bandwidth of a stage above the bandwidth": [
+        'stage[1].min_bandwidth = "12 %": must be at most the bandwidth, 11.9 %'
+    ],
+    "inductance of a ladder's resonators": [
+        ('design.resonator = "8 nH": must be left out for ladder: the inductance of its resonators is not free')
+    ],
+    "capacitance of a ladder's resonators": [
+        (
+            'stage[1].resonator = "6 pF": must be left out for ladder-shunt and ladder-series: the capacitance of '
+            "its resonators is not free"
+        )
+    ],
+    "capacitance of capacitively coupled resonators": [
+        'stage[1].resonator = "6 pF": must be left out for capacitive and ladder: the capacitance of its resonators '
+        "is not free"
+    ],
+    "ladder where the inductance is fixed": [
+        (
+            'stage[1].topology = "ladder": must name a circuit that leaves the inductance of resonators free, '
+            'or resonator be "auto"'
+        )
+    ],
     "unknown filter": [
         ('stage[1].filter = "auto": must be "plan", "none" or a table { family, order, centre, bandwidth }')
     ],

@@ -309,7 +309,7 @@ def test_the_package_carries_the_scenarios_folder():
 # ------------------------------------------------------------------------------------------------------- help
 
 
-@pytest.mark.parametrize("command", ["", "plan", "lines", "schema", "new"])
+@pytest.mark.parametrize("command", ["", "plan", "lines", "schema", "new", "apply"])
 def test_help_shows_an_example_of_that_command(command, capsys):
     assert cli.main([*command.split(), "--help"]) == 0
     text = capsys.readouterr().out

@@ -13,9 +13,11 @@ ROOMS = ("model", "physics", "parts", "filters", "chain", "planning", "export", 
 
 ROOM_OF_MODULE = {
     "__main__": "cli",
+    "applying": "scenario",
     "quantities": "scenario",
     "rules": "scenario",
     "scenario_checks": "scenario",
+    "scenario_defaults": "scenario",
     "scenario_problems": "scenario",
     "scenario_tables": "scenario",
     "template": "scenario",
@@ -30,6 +32,7 @@ ALLOWED_OUTSIDE = {
     "pandas": {"export"},
     "pydantic": {"parts", "scenario"},
     "quantiphy": {"parts", "scenario"},
+    "tomlkit": {"scenario"},
 }
 """Libraries for people's side of the program, and the rooms that may use them."""
 

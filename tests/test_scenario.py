@@ -69,13 +69,16 @@ def test_a_kit_file_is_looked_up_beside_the_scenario(tmp_path):
     path = tmp_path / "chain.toml"
     path.write_text(document(design='kit = "own.toml"'))
     kits = ", ".join(f'"{name}"' for name in kit_names())
-    allowed = f'design.kit = "own.toml": must be {kits} or the path of a kit file; '
+    first = 'design.kit = "own.toml"'
+    allowed = f"{first}: must be {kits} or the path of a kit file; "
     assert file_problem(path) == (allowed + "not found",)
     (tmp_path / "own.toml").write_text("")
     assert all(problem.startswith(allowed) for problem in file_problem(path))
     shipped = Path(sys.modules["harmonic_planner"].__file__).parent / "parts" / "data" / "chip-1008.toml"
     (tmp_path / "own.toml").write_bytes(shipped.read_bytes())
-    assert load(path).design.kit == "own.toml"
+    assert load(path).design.kits == ("own.toml",)
+    path.write_text(document(design='kit = ["chip-0805", "own.toml", "gone.toml"]'))
+    assert file_problem(path) == ('design.kit[3] = "gone.toml"' + allowed.removeprefix(first) + "not found",)
 
 
 # ------------------------------------------------------------------------------------------------------ conversion
@@ -94,7 +97,7 @@ def test_every_key_arrives_in_SI():
     assert scenario.output.mask == (MaskBand(2.3e9, 2.5e9, -75.0),)
     design = Design(
         impedance_ohm=75.0,
-        kit="chip-1008",
+        kits=("chip-1008", "air-wound"),
         families=("chebyshev",),
         ripple_db=0.2,
         max_order=5,
@@ -110,6 +113,8 @@ def test_every_key_arrives_in_SI():
         min_bandwidth=0.1,
         topology=("ladder-shunt",),
         tuned=True,
+        order=4,
+        bandwidth=0.125,
     )
     assert scenario.design == design
     first, second, third = scenario.stages
@@ -137,10 +142,16 @@ def test_a_stage_overrides_design_keys_for_itself_alone():
     first, second, _ = scenario.stages
     assert second.design == scenario.design
     changed = {f.name for f in fields(Design) if getattr(first.design, f.name) != getattr(scenario.design, f.name)}
-    assert changed == {"impedance_ohm", "isolation", "topology", "min_bandwidth"}
+    assert changed == {
+        *("impedance_ohm", "isolation", "topology", "min_bandwidth"),
+        *("kits", "order", "bandwidth", "resonator_f"),
+    }
     assert first.design.isolation.level_db == math.inf
     assert first.design.topology == ("auto",)
     assert first.design.min_bandwidth is None
+    assert first.design.kits == ("chip-0805",)
+    assert (first.design.order, first.design.bandwidth) == (None, None)
+    assert (first.design.resonator_h, first.design.resonator_f) == (None, pytest.approx(6e-12, rel=1e-15))
 
 
 def test_every_design_key_may_stand_in_a_stage():
@@ -149,6 +160,16 @@ def test_every_design_key_may_stand_in_a_stage():
     scenario = read(document(stage=f"times = 2\n{DEVICE}\n{keys}"))
     assert scenario.design == Design()
     assert scenario.stages[0].design == read(FULL).design
+
+
+@pytest.mark.parametrize("resonator, henry, farad", [("8 nH", 8e-9, None), ("6 pF", None, 6e-12), ("auto", None, None)])
+def test_a_resonator_is_an_inductance_or_a_capacitance(resonator, henry, farad):
+    """A stage's own replaces that of [design] whole, whichever of the two it is."""
+    for fixed in ("1 uH", "1 nF"):
+        stage = f'times = 2\n{DEVICE}\nresonator = "{resonator}"'
+        design = read(document(design=f'resonator = "{fixed}"', stage=stage)).stages[0].design
+        assert design.resonator_h == (henry and pytest.approx(henry, rel=1e-15))
+        assert design.resonator_f == (farad and pytest.approx(farad, rel=1e-15))
 
 
 @pytest.mark.parametrize("bandwidth, width_hz", [("10 %", 20e6), ("60 MHz", 60e6), ("100 %", 200e6)])
@@ -199,6 +220,8 @@ def test_every_default_is_listed():
         "design.families = butterworth and chebyshev",
         "design.ripple = 0.1 dB",
         "design.max_order = 9",
+        "design.order = auto",
+        "design.bandwidth = auto",
         "design.flatness = 1 dB",
         "design.loss = 6 dB",
         "design.drift = 1 %",
@@ -210,6 +233,7 @@ def test_every_default_is_listed():
         "design.unloaded_q: from kit and topology",
         "design.min_bandwidth = kit",
         "design.topology = auto",
+        "design.resonator = auto",
         "design.tuned = false",
         "stage[1].device.half_angle = 70 deg",
         "stage[1].device.balance = 25 dB",

@@ -9,23 +9,28 @@ from hypothesis import strategies as st
 
 from harmonic_planner.quantities import (
     ANGLE,
+    CAPACITANCE,
     FREQUENCY,
+    INDUCTANCE,
     LEVEL_DBM,
     LINE_DBC,
     NOISE_DBC_HZ,
     OFFSET,
     PERCENT,
     RATIO_DB,
+    REACTANCE,
     RESISTANCE,
     Either,
     Pair,
+    Reactance,
     Width,
     WidthRule,
 )
-from harmonic_planner.rules import Choice, Flag, Number, RefusedError, Several, Text, nearest
+from harmonic_planner.rules import Choice, Flag, Names, Number, RefusedError, Several, Text, nearest
 
 KINDS = [FREQUENCY, OFFSET, RESISTANCE, LEVEL_DBM, LINE_DBC, RATIO_DB, NOISE_DBC_HZ, PERCENT, ANGLE]
-FEWER = settings(max_examples=25)  # of each of the nine kinds
+KINDS += [INDUCTANCE, CAPACITANCE]
+FEWER = settings(max_examples=25)  # of each kind
 kinds = pytest.mark.parametrize("kind", KINDS, ids=lambda kind: kind.unit + " " + kind.noun)
 
 READ = [
@@ -35,12 +40,15 @@ READ = [
     (FREQUENCY, "600.1 MHz", 600.1e6),
     (FREQUENCY, "1e9 Hz", 1e9),
     (FREQUENCY, "1 THz", 1e12),
+    (FREQUENCY, "1e3 MHz", 1e9),
+    (FREQUENCY, "1.5E-3GHz", 1.5e6),
     (FREQUENCY, "1 kHz", 1e3),
     (OFFSET, "10 Hz", 10.0),
     (RESISTANCE, "50 ohm", 50.0),
     (RESISTANCE, "50 Ω", 50.0),  # Greek letter
     (RESISTANCE, "50 \u2126", 50.0),  # ohm sign
     (RESISTANCE, "0.6 kohm", 600.0),
+    (RESISTANCE, "6e-1 kohm", 600.0),
     (LEVEL_DBM, "10 dBm", 10.0),
     (LEVEL_DBM, "+.5 dBm", 0.5),
     (LINE_DBC, "-60 dBc", -60.0),
@@ -51,6 +59,18 @@ READ = [
     (PERCENT, "7%", 0.07),
     (ANGLE, "180 deg", math.pi),
     (ANGLE, "60°", math.pi / 3),
+    (INDUCTANCE, "8 nH", 8e-9),
+    (INDUCTANCE, "560pH", 560e-12),
+    (INDUCTANCE, "1.2 uH", 1.2e-6),
+    (INDUCTANCE, "1.2 \u00b5H", 1.2e-6),  # micro sign
+    (INDUCTANCE, "1.2 \u03bcH", 1.2e-6),  # Greek letter
+    (INDUCTANCE, "2 mH", 2e-3),
+    (INDUCTANCE, "1e-8 H", 1e-8),
+    (INDUCTANCE, "12e-1 \u00b5H", 1.2e-6),
+    (CAPACITANCE, "6 pF", 6e-12),
+    (CAPACITANCE, "120 fF", 0.12e-12),
+    (CAPACITANCE, "4.7 nF", 4.7e-9),
+    (CAPACITANCE, "1 uF", 1e-6),
 ]
 
 
@@ -89,6 +109,12 @@ REFUSED = [
     (ANGLE, "180.0001 deg", ""),
     (ANGLE, "1 rad", 'the unit "rad" is not deg, upper and lower case count'),
     (PERCENT, "0.1", "the unit is missing"),
+    (INDUCTANCE, "8 nh", 'the unit "nh" is not H or pH or nH or \u00b5H or mH, upper and lower case count'),
+    (INDUCTANCE, "0 nH", ""),
+    (INDUCTANCE, "1 H", ""),
+    (CAPACITANCE, "6 PF", 'the unit "PF" is not F or fF or pF or nF or \u00b5F, upper and lower case count'),
+    (CAPACITANCE, "1 mF", 'the unit "mF" is not F or fF or pF or nF or \u00b5F, upper and lower case count'),
+    (CAPACITANCE, "-6 pF", ""),
 ]
 
 
@@ -110,13 +136,35 @@ def test_words_of_what_is_allowed():  # regression: our own wording
 @FEWER
 @given(data=st.data())
 def test_what_is_written_reads_back(kind, data):
-    low, high = max(kind.low, 1e-6) if kind.prefixes else kind.low, kind.high
+    low, high = kind.low or (1e-6 if kind.prefixes else 0.0), kind.high
     number = data.draw(st.floats(low, high, exclude_min=kind.above, exclude_max=kind.below, allow_subnormal=False))
     number = float(f"{number:.11g}")  # what is written has twelve digits, so that the ends of the range stay inside
     if number in (kind.low, kind.high) and (kind.above or kind.below):
         return
     value = number / kind.divisor
     assert kind.parse(kind.write(value)) == pytest.approx(value, rel=1e-10, abs=0)
+
+
+@FEWER
+@given(exponent=st.floats(-11, -1), farad=st.booleans())
+def test_a_reactance_reads_back_with_its_unit(exponent, farad):
+    reactance = Reactance(float(f"{10**exponent:.12g}") * (1e-3 if farad else 1), "F" if farad else "H")
+    text = REACTANCE.write(reactance)
+    assert "e" not in text  # in the size people write it
+    back = REACTANCE.parse(text)
+    assert back.unit == reactance.unit
+    assert back.value == pytest.approx(reactance.value, rel=1e-10)
+
+
+@pytest.mark.parametrize(
+    "value, unit",
+    [("8", None), ("8 ohm", "H or pH"), ("6 pf", "F or fF"), ("8 nh", "H or pH"), ("6 p", "H or pH"), (8e-9, None)],
+)
+def test_a_refused_reactance_names_the_units_that_were_meant(value, unit):
+    with pytest.raises(RefusedError) as caught:
+        REACTANCE.parse(value)
+    assert str(caught.value).startswith(f"must be {INDUCTANCE.allowed}, or {CAPACITANCE.allowed}; ")
+    assert unit is None or f"is not {unit} or" in caught.value.reason
 
 
 @kinds
@@ -235,6 +283,12 @@ def test_a_number_is_taken_exactly_inside_its_range(value, low, width, whole):
         (Several(Choice(("a", "b"))), []),
         (Several(Choice(("a", "b"))), ["a", "a"]),
         (Several(Choice(("a", "b"))), [{}]),
+        (Names(Text("a name", 5)), []),
+        (Names(Text("a name", 5)), ["a", " a "]),
+        (Names(Text("a name", 5)), ["a", 3]),
+        (Names(Text("a name", 5)), [["a"]]),
+        (Names(Text("a name", 5)), {"a": 1}),
+        (Names(Text("a name", 5)), ""),
     ],
 )
 def test_refused_plain_values(rule, value):
@@ -247,6 +301,8 @@ def test_plain_values():
     assert Text("a name", 5).parse(" ab ") == "ab"
     assert Several(Choice(("a", "b"))).parse(["b", "a"]) == ("b", "a")
     assert Number(0, 1).parse(1) == 1.0
+    assert Names(Text("a name", 5)).parse("a") == ("a",)
+    assert Names(Text("a name", 5)).parse(["b", " a"]) == ("b", "a")
 
 
 def test_nearest_word():

@@ -58,7 +58,9 @@ def test_message_names_the_file_on_every_line():
 
 
 JUNK = st.recursive(
-    st.sampled_from(['"600 MHz"', '"-3 dBc"', '""', '"\\u0007"', "3", "-1.5", "nan", "true", "1979-05-27", '"plan"']),
+    st.sampled_from(
+        ['"600 MHz"', '"-3 dBc"', '""', '"\\u0007"', "3", "-1.5", "nan", "true", "1979-05-27", '"plan"', '"8 nH"']
+    ),
     lambda inner: (
         st.lists(inner, max_size=3).map(lambda items: "[" + ", ".join(items) + "]")
         | st.dictionaries(st.sampled_from(["type", "2", "table", "[key]", "x y", "from"]), inner, max_size=3).map(
@@ -68,7 +70,19 @@ JUNK = st.recursive(
     max_leaves=4,
 )
 PLACES = ["title", "source", "output", "design", "stage", "x", "source.frequency", "source.lines", "output.mask"]
-PLACES += ["design.topology", "design.families", "design.kit", "stage.device", "stage.filter", "stage.name", "table"]
+PLACES += [
+    "design.topology",
+    "design.families",
+    "design.kit",
+    "design.order",
+    "design.bandwidth",
+    "stage.resonator",
+    "stage.kit",
+    "stage.device",
+    "stage.filter",
+    "stage.name",
+    "table",
+]
 
 
 @settings(max_examples=150)

@@ -22,7 +22,7 @@ def test_template_is_read_and_says_what_it_is():
     assert [stage.times for stage in scenario.stages] == [3, 2]
     assert scenario.source.frequency_hz == (25e6, 25e6)
     assert scenario.output.limit_dbc == -50.0
-    assert {stage.design.kit for stage in scenario.stages} == {"chip-1008"}
+    assert {stage.design.kits for stage in scenario.stages} == {("chip-1008",)}
     assert all(stage.pad_db == stage.pad_after_db == 6.0 for stage in scenario.stages)
 
 
@@ -79,6 +79,7 @@ def schema_faults(value, schema, root, place="$"):
         "maxLength": lambda want: len(value) <= want,
         "minItems": lambda want: len(value) >= want,
         "maxItems": lambda want: len(value) <= want,
+        "uniqueItems": lambda _: all(value.count(item) == 1 for item in value),
         "required": lambda want: set(want) <= value.keys(),
     }
     faults += [
@@ -105,6 +106,8 @@ VALID = {
     "everything": FULL,
     "least": document(),
     "isolation none": document(design='isolation = "none"\nmin_bandwidth = "kit"\ntopology = "ladder"'),
+    "fixed": document(design='order = 3\nbandwidth = "9 %"\nresonator = "0.1 µH"\nkit = ["chip-0402", "chip-0603"]'),
+    "resonators": document(design='topology = ["capacitive", "ladder"]\nresonator = "8 nH"'),
     "power-law": device('type = "power-law"'),
     "given": given_filter('family = "butterworth", order = 3, centre = "200 MHz", bandwidth = "60 MHz"'),
 }
@@ -134,6 +137,12 @@ def test_valid_documents_are_read_and_fit_the_schema(case):
         "spurs",
         "fraction of a device",
         "reflection of one",
+        "fixed order 0",
+        "fixed order in quotes",
+        "fixed bandwidth in hertz",
+        "resonator in ohms",
+        "kit twice",
+        "no kit",
     ],
 )
 def test_schema_refuses_too(case):

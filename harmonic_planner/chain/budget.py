@@ -1,9 +1,7 @@
 """One output limit turned into a rejection for every unwanted line of every stage.
 
-The rule: equal shares of each limit over the contributions into it, a forward run, the stage that contributes most
-tightened until all limits are met, then what is slack relaxed. `equal_shares` gives the first guess, `orders` in
-`chain.assign` tightens and relaxes whole filters, and `requirement` turns what the filters then do into the smallest
-set of rejections that suffices together.
+`allocate` chooses the filters; `requirement` turns what they then do into the smallest set of rejections that suffices
+together, which is what each filter is specified by.
 """
 
 from __future__ import annotations
@@ -62,49 +60,6 @@ def worst_excess(chain: ChainArrays, rejections_db: Sequence[Array]) -> Array:
     """Return level over limit, (stages, lines), allowances counted, for filters that give `rejections_db`."""
     combs = propagate(chain, [chain.from_db(-r) for r in rejections_db], allowed=True)
     return excess(chain, combs)
-
-
-def equal_shares(chain: ChainArrays, filtered: Sequence[bool]) -> tuple[Array, ...]:
-    """Return a first guess: every contribution into a limit takes an equal share of it.
-
-    Only lines that a stage's device makes itself are rejected there; sidebands that later multipliers make of the
-    rest cannot be.
-
-    Parameters
-    ----------
-    chain : ChainArrays
-        With the limits to meet, margin included.
-    filtered : sequence of bool
-        Whether the stage has a filter.
-
-    Returns
-    -------
-    tuple of (lines,) float
-        Rejection [dB], one array a stage.
-    """
-    count = chain.grid.count
-    rejections = [np.zeros(count) for _ in chain.stages]
-    v = chain.source
-    made = []
-    for stage in chain.stages:
-        made.append(stage.mismatch * stage.termination * (stage.device + stage.conversion @ v))
-        v = stage.amplifier
-    for i in range(len(chain.stages) - 1, -1, -1):
-        if not filtered[i]:
-            continue
-        relied = chain.stages[i].own | (np.asarray(made[i]) > 0) & (i == 0)
-        for to in range(i, len(chain.stages)):
-            limit = chain.stages[to].limit
-            if not np.isfinite(limit).any():
-                continue
-            gains = path_gains(chain, [chain.from_db(-r) for r in rejections], after=i, to=to, allowed=True)
-            into = gains * made[i]
-            contributors = np.maximum((into > 1e-3 * limit[:, None]).sum(axis=1), 1)
-            needed = (into * contributors[:, None] / limit[:, None]).max(axis=0)
-            with np.errstate(divide="ignore"):
-                share_db = np.maximum(chain.to_db(needed), 0.0)
-            rejections[i] = np.where(relied, np.maximum(rejections[i], share_db), 0.0)
-    return tuple(rejections)
 
 
 def requirement(chain: ChainArrays, achieved_db: Sequence[Array], filtered: Sequence[bool]) -> Rejections:

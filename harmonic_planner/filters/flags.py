@@ -15,10 +15,13 @@ series capacitor   over C: the pads of all parts on each of its nodes that neith
 Self-resonance, against the centre: an inductor's own; a capacitor's with its mounted inductance, and a shunt one's with
 its via. Range: what the kit does not sell is swamped.
 
+Absorbed strays: where nominal values are given, from which strays were taken off, what is left of a stray is its own
+tolerance (30 % of it in the shipped kits); range and self-resonance are then those of the nominal value.
+
 Notes
 -----
-Strays are weighed against single values. How they act together on the response, and what absorbing them leaves, is not
-seen here. The capacitance of a series inductor beside a port or a shunt capacitor counts as that node's.
+Strays are weighed against single values; how they act together on the response is not seen here. The capacitance of a
+series inductor beside a port or a shunt capacitor counts as that node's.
 """
 
 from __future__ import annotations
@@ -27,14 +30,19 @@ import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 
-from harmonic_planner.filters.circuit import GROUND, INPUT, Circuit, Element
+from harmonic_planner.filters.circuit import GROUND, INPUT, Circuit, CircuitError, Element
 from harmonic_planner.model import VERDICT_RANK, ElementReport, ElementVerdict
 from harmonic_planner.parts.kits import Kit
 from harmonic_planner.parts.quantities import readable
 
 
 def judge(
-    circuit: Circuit, kit: Kit, *, centre_hz: float | None = None, highest_line_hz: float | None = None
+    circuit: Circuit,
+    kit: Kit,
+    *,
+    centre_hz: float | None = None,
+    highest_line_hz: float | None = None,
+    nominal: Circuit | None = None,
 ) -> tuple[ElementReport, ...]:
     """Judge every element of a circuit against a kit.
 
@@ -49,15 +57,31 @@ def judge(
     highest_line_hz : float, optional
         Highest line the filter must reject [Hz]; a self-resonance below it is named in the reason and leaves the
         verdict as it is.
+    nominal : Circuit, optional
+        The same elements by ref with the values that are bought, strays absorbed; without it strays are not absorbed
+        and nominal values are the ideal ones.
 
     Returns
     -------
     tuple of ElementReport
-        In the circuit's order. `reason` names every count that is not `ok`, the worst first, or the numbers that make
-        the element `ok`.
+        In the circuit's order. `stray_share` is of the ideal value, of what is left where strays are absorbed.
+        `reason` names every count that is not `ok`, the worst first, or the numbers that make the element `ok`.
+
+    Raises
+    ------
+    CircuitError
+        Where the nominal circuit lacks an element.
     """
     centre = circuit.centre_hz if centre_hz is None else centre_hz
-    return tuple(_report(circuit, element, kit, centre, highest_line_hz) for element in circuit.elements)
+    bought = {element.ref: element for element in nominal.elements} if nominal is not None else None
+    if bought is not None:
+        for element in circuit.elements:
+            if element.ref not in bought:
+                raise CircuitError(f"{circuit.topology}: {element.ref} has no nominal value")
+    return tuple(
+        _report(circuit, element, kit, centre, highest_line_hz, None if bought is None else bought[element.ref])
+        for element in circuit.elements
+    )
 
 
 def worst(reports: Sequence[ElementReport]) -> ElementReport:
@@ -82,22 +106,28 @@ class _Count:
 
 
 def _report(
-    circuit: Circuit, element: Element, kit: Kit, centre_hz: float, highest_line_hz: float | None
+    circuit: Circuit,
+    element: Element,
+    kit: Kit,
+    centre_hz: float,
+    highest_line_hz: float | None,
+    absorbed: Element | None,
 ) -> ElementReport:
     inductor = element.kind == "L"
     stray, stray_words = _inductor_stray(element, kit) if inductor else _capacitor_stray(circuit, element, kit)
-    share = stray / element.value
+    left = 1.0 if absorbed is None else kit.thresholds.stray_tolerance
+    bought = element if absorbed is None else absorbed
     if inductor:
-        resonance_hz = kit.inductor.self_resonance_hz(element.value)
+        resonance_hz = kit.inductor.self_resonance_hz(bought.value)
         q = float(kit.inductor.q(centre_hz))
     else:
         via_h = kit.board.via_h if element.placement == "shunt" else 0.0
-        resonance_hz = kit.capacitor.self_resonance_hz(element.value, via_h)
-        q = float(kit.capacitor.q(element.value, centre_hz))
+        resonance_hz = kit.capacitor.self_resonance_hz(bought.value, via_h)
+        q = float(kit.capacitor.q(bought.value, centre_hz))
     counts = sorted(
         (
-            _range_count(element, kit),
-            _stray_count(element, kit, stray, stray_words),
+            _range_count(bought, kit),
+            _stray_count(element, kit, stray, stray_words, left),
             _resonance_count(kit, resonance_hz, centre_hz, highest_line_hz),
         ),
         key=lambda count: -VERDICT_RANK[count.verdict],
@@ -111,11 +141,11 @@ def _report(
         kind=element.kind,
         placement=element.placement,
         ideal=element.value,
-        nominal=element.value,
+        nominal=bought.value,
         unit="H" if inductor else "F",
         q=q,
         self_resonance_hz=resonance_hz,
-        stray_share=share,
+        stray_share=left * stray / element.value,
         verdict=verdict,
         reason="; ".join(words),
     )
@@ -160,8 +190,9 @@ def _range_count(element: Element, kit: Kit) -> _Count:
     return _Count("swamped", f"not available: {_text(value, unit)} is {word} the kit's {_text(end, unit)}")
 
 
-def _stray_count(element: Element, kit: Kit, stray: float, words: str) -> _Count:
-    share = stray / element.value
+def _stray_count(element: Element, kit: Kit, stray: float, words: str, left: float) -> _Count:
+    """Judge the part of a stray that is left, as a fraction of the whole; the words give both."""
+    share = left * stray / element.value
     limits = kit.thresholds
     verdict: ElementVerdict = "swamped"
     if share <= limits.stray_ok:
@@ -171,10 +202,11 @@ def _stray_count(element: Element, kit: Kit, stray: float, words: str) -> _Count
     unit = "H" if element.kind == "L" else "F"
     if stray == 0:
         return _Count(verdict, "no strays counted")
-    return _Count(
-        verdict,
-        f"strays {share * 100:.3g} % ({_text(stray, unit)} of {words} in {_text(element.value, unit)})",
-    )
+    what = f"{_text(stray, unit)} of {words} in {_text(element.value, unit)}"
+    if left == 1:
+        return _Count(verdict, f"strays {share * 100:.3g} % ({what})")
+    whole = stray / element.value * 100
+    return _Count(verdict, f"strays {whole:.3g} % ({what}), absorbed to {share * 100:.3g} %")
 
 
 def _resonance_count(kit: Kit, resonance_hz: float, centre_hz: float, highest_line_hz: float | None) -> _Count:

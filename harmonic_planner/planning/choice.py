@@ -1,7 +1,9 @@
-"""One stage's filter: from the rejections it must give to a circuit that gives them.
+"""One stage's filter: from the rejections it must give to parts that give them.
 
-The least order with a window that a circuit confirms is taken, at the widest bandwidth that the circuit confirms:
-the wide end of a window is the one that can be built and loses least.
+Orders are tried from the least. At each, every allowed topology, family, kit and resonator value is drawn with ideal
+values at the widest bandwidth that gives every rejection, the topology's skew counted; the most promising drawings are
+then built, strays absorbed, on the kit's grid, and the first that gives every rejection as built and can be built is
+taken. So: meets every line as built and is buildable, then fewest resonators, loss, part count.
 """
 
 from __future__ import annotations
@@ -11,78 +13,52 @@ from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 
 import numpy as np
-from numpy.typing import NDArray
 
-from harmonic_planner.chain.leakage import skirt_needed_db
-from harmonic_planner.filters import flags
-from harmonic_planner.filters.circuit import Circuit
-from harmonic_planner.filters.topologies import TopologyError, design, expand
-from harmonic_planner.filters.windows import Task, WindowResult, centres, scan
-from harmonic_planner.model import VERDICT_RANK, ElementReport, ElementVerdict, Window
+from harmonic_planner.filters.topologies.base import Topology
+from harmonic_planner.filters.windows import Task, WindowResult, centres
+from harmonic_planner.model import ElementReport, Window
 from harmonic_planner.physics.prototypes import Prototype
-from harmonic_planner.planning.candidates import task_for
-from harmonic_planner.planning.jobs import Action, Array, Job, act, circuit_attenuation
+from harmonic_planner.planning.built import Built, Form, as_built, meets, realise, sketch
+from harmonic_planner.planning.forms import allowed_topologies, forms, realises
+from harmonic_planner.planning.jobs import Array, Job, is_far
+from harmonic_planner.planning.one_sided import one_sided_drawings
+from harmonic_planner.planning.windows_of import (
+    leak_reason,
+    prototype_windows,
+    skewed_window,
+    skirts_db,
+    to_report,
+)
 
-_STEPS = 12
-
-
-@dataclass(frozen=True)
-class Built:
-    """A filter as a circuit, with what it does and what its parts are.
-
-    `bandwidth` is a fraction of the centre; `short_db` is the least of rejection minus requirement, over the lines
-    that need any.
-    """
-
-    prototype: Prototype
-    topology: str
-    centre_hz: float
-    bandwidth: float
-    circuit: Circuit
-    action: Action
-    midband_db: float
-    elements: tuple[ElementReport, ...]
-    short_db: float
-
-    @property
-    def verdict(self) -> ElementVerdict:
-        """The worst verdict among the parts."""
-        return max((e.verdict for e in self.elements), key=VERDICT_RANK.__getitem__, default="ok")
-
-    @property
-    def strain(self) -> tuple[int, int]:
-        """How many parts are swamped, and how many marginal: less is better."""
-        verdicts = [e.verdict for e in self.elements]
-        return verdicts.count("swamped"), verdicts.count("marginal")
+_HALVINGS = 3
+_BUILT_PER_ORDER = 6
+_BUILT_PER_TOPOLOGY = 2
+_NARROWER = (1.0, 0.95, 0.85)
+_ORDERS_BEYOND = 2
+_HOPELESS_DB = 6.0
 
 
 @dataclass(frozen=True)
 class Choice:
-    """The chosen filter, or why there is none, and every window that was looked at."""
+    """The chosen filter, or why there is none, and every window that was looked at.
+
+    `best` is the filter that comes nearest where none meets every line.
+    """
 
     built: Built | None
+    best: Built | None
     reason: str
-    task: Task
-    results: tuple[WindowResult, ...]
     windows: tuple[Window, ...]
 
 
-def realises(topology: str, prototype: Prototype) -> bool:
-    """Tell whether a topology can realise a prototype between equal impedances."""
-    try:
-        design(topology, prototype, centre_hz=1e9, bandwidth=0.1, impedance_ohm=50.0)
-    except TopologyError:
-        return False
-    return True
-
-
-def buildable_prototypes(job: Job) -> Iterator[Prototype]:
-    """Yield every prototype that one of the stage's topologies can realise between equal impedances."""
-    for family in job.design.families:
-        for order in range(1, job.design.max_order + 1):
-            prototype = Prototype(family, order, job.design.ripple_db)
-            if any(realises(name, prototype) for name in expand(job.design.topology)):
-                yield prototype
+def able(job: Job) -> Iterator[tuple[Prototype, Topology]]:
+    """Yield every prototype with the topologies that can realise it, one for each skew."""
+    for prototype in _prototypes(job):
+        skews = set()
+        for topology in allowed_topologies(job):
+            if topology.skew_db not in skews and realises(topology.name, prototype):
+                skews.add(topology.skew_db)
+                yield prototype, topology
 
 
 def choose(job: Job, required_db: Array, *, carrier_db: float) -> Choice:
@@ -99,150 +75,217 @@ def choose(job: Job, required_db: Array, *, carrier_db: float) -> Choice:
     Returns
     -------
     Choice
-        `built` is None where no order has a window, with the reason in words.
+        `built` is None where no filter as built gives every rejection, with the reason in words.
     """
-    task, results, windows = look(job, required_db, carrier_db=carrier_db)
-    for order in range(1, job.design.max_order + 1):
-        options = [
-            built
-            for result in results
-            if result.feasible and result.prototype.order == order
-            for name in expand(job.design.topology)
-            if (built := widest(job, result, name, task, required_db)) is not None
-        ]
-        if options:
-            best = min(options, key=lambda b: (*b.strain, -b.bandwidth))
-            return Choice(best, _why(best, options, order), task, results, windows)
-    return Choice(None, _why_not(job, results, required_db, carrier_db), task, results, windows)
+    windows = report_windows(job, required_db, carrier_db=carrier_db)
+    strained: Built | None = None
+    nearest: Built | None = None
+    hopeless: list[tuple[float, Built]] = []
+    seen: list[Built] = []
+    first: int | None = None
+    for order in _orders(job):
+        if first is not None and order > first + _ORDERS_BEYOND:
+            break
+        drawn = sorted(drawings(job, order, required_db, carrier_db), key=promise)
+        if drawn and first is None:
+            first = order
+        hopeful: list[Built] = []
+        for candidate in drawn:
+            short_db = far_short_db(job, candidate, required_db)
+            if short_db > _HOPELESS_DB:
+                hopeless.append((short_db, candidate))
+            elif sum(b.topology == candidate.topology for b in hopeful) < _BUILT_PER_TOPOLOGY:
+                hopeful.append(candidate)
+        for candidate in hopeful[:_BUILT_PER_ORDER]:
+            built = settle_bandwidth(job, candidate, required_db)
+            seen.append(built)
+            if not meets(job, built):
+                nearest = max((b for b in (nearest, built) if b is not None), key=lambda b: b.short_db)
+                continue
+            if built.verdict != "swamped":
+                return Choice(built, built, _why(built, seen), windows)
+            strained = min((b for b in (strained, built) if b is not None), key=lambda b: b.strain)
+    if strained is not None:
+        return Choice(strained, strained, _why(strained, seen), windows)
+    if nearest is None and hopeless:
+        nearest = realise(job, min(hopeless, key=lambda found: found[0])[1], required_db)
+    return Choice(None, nearest, _why_not(job, required_db, carrier_db, windows, nearest), windows)
 
 
-def look(
-    job: Job, required_db: Array, *, carrier_db: float
-) -> tuple[Task, tuple[WindowResult, ...], tuple[Window, ...]]:
-    """Return the solver's task, its answers for every family and order, and the windows to report."""
-    skirts = np.where(
-        required_db > 0, skirt_needed_db(required_db, carrier_db, job.leak_db, exponent=job.exponent), 0.0
+def far_short_db(job: Job, drawn: Built, required_db: Array) -> float:
+    """Return by how much strays let the worst far line through, ideal values kept [dB]; below zero where none.
+
+    Absorbing strays moves the passband back; far from it they act as they are.
+    """
+    wanted = is_far(job) & (required_db > 0)
+    if not wanted.any():
+        return -math.inf
+    frequency_hz = np.concatenate([job.low_hz[wanted], job.high_hz[wanted]])
+    attenuation_db = as_built(job, drawn.ideal, drawn.form)(frequency_hz).reshape(2, -1).min(axis=0)
+    return float(np.max(required_db[wanted] - (attenuation_db - drawn.action.carrier_most_db)))
+
+
+def report_windows(job: Job, required_db: Array, *, carrier_db: float) -> tuple[Window, ...]:
+    """Return the windows of every family and order for a requirement, as the plan shows them."""
+    results = prototype_windows(job, required_db, carrier_db)
+    topologies = allowed_topologies(job)
+    return to_report(
+        job, results, required_db, carrier_db, lambda prototype: any(realises(t.name, prototype) for t in topologies)
     )
-    reachable = np.isfinite(skirts)
-    task = task_for(job, np.where(reachable, skirts, 0.0))
-    results = scan(task, families=job.design.families, ripple_db=job.design.ripple_db, max_order=job.design.max_order)
-    leak_reason = "" if reachable.all() else _leak_reason(job, required_db, ~reachable)
-    return task, results, tuple(_window(r, leak_reason, buildable=_realisable(job, r)) for r in results)
 
 
-def build(
-    job: Job, prototype: Prototype, topology: str, *, centre_hz: float, bandwidth: float, required_db: Array
+def drawings(job: Job, order: int, required_db: Array, carrier_db: float) -> Iterator[Built]:
+    """Yield, for one order, every form at the widest bandwidth at which its ideal values give every rejection.
+
+    A low-pass or high-pass comes with the order that has as many resonators as it has pairs of parts.
+    """
+    if job.design.order is None:
+        yield from one_sided_drawings(job, order, required_db)
+    for prototype in _prototypes(job):
+        if prototype.order != order:
+            continue
+        for topology in allowed_topologies(job):
+            if not realises(topology.name, prototype):
+                continue
+            task, window = skewed_window(job, topology, prototype, required_db, carrier_db)
+            if not window.feasible:
+                continue
+            middle = float(np.sqrt(window.bandwidth_min * window.bandwidth_max))
+            for form in forms(job, topology, prototype, centre_hz=job.centre_hz, bandwidth=middle):
+                found = widest(job, prototype, form, task, window, required_db)
+                if found is not None:
+                    yield found
+
+
+def widest(
+    job: Job, prototype: Prototype, form: Form, task: Task, window: WindowResult, required_db: Array
 ) -> Built | None:
-    """Design one circuit and measure what it does; None where the topology cannot be designed so."""
-    try:
-        circuit = design(
-            topology, prototype, centre_hz=centre_hz, bandwidth=bandwidth, impedance_ohm=job.design.impedance_ohm
-        )
-    except TopologyError:
-        return None
-    attenuation = circuit_attenuation(job, circuit, unloaded_q=job.design.unloaded_q)
-    action = act(job, attenuation)
-    needing = required_db > 0
-    rejected = job.low_hz[needing]
-    highest_hz = float(rejected.max()) if rejected.size else centre_hz
-    return Built(
-        prototype=prototype,
-        topology=topology,
-        centre_hz=centre_hz,
-        bandwidth=bandwidth,
-        circuit=circuit,
-        action=action,
-        midband_db=float(attenuation(np.array([centre_hz]))[0]),
-        elements=flags.judge(circuit, job.kit, centre_hz=centre_hz, highest_line_hz=highest_hz),
-        short_db=float(np.min((action.rejection_db - required_db)[needing], initial=np.inf)),
-    )
-
-
-def widest(job: Job, result: WindowResult, topology: str, task: Task, required_db: Array) -> Built | None:
-    """Return the widest circuit of this window that gives every rejection and keeps the loss limit, or None."""
-    if not realises(topology, result.prototype):
-        return None
+    """Return the widest drawing in a window that gives every rejection, or None."""
 
     def at(bandwidth: float) -> Built | None:
-        interval = centres(result.prototype, task, bandwidth)
+        interval = centres(prototype, task, bandwidth)
         if interval is None:
             return None
         centre_hz = float(np.sqrt(interval[0] * interval[1]))
-        built = build(
-            job, result.prototype, topology, centre_hz=centre_hz, bandwidth=bandwidth, required_db=required_db
-        )
-        return built if built is not None and meets(job, built) else None
+        return sketch(job, prototype, form, centre_hz=centre_hz, bandwidth=bandwidth, required_db=required_db)
 
-    wide, narrow = result.bandwidth_max, result.bandwidth_min
-    best = at(wide)
-    if best is not None:
-        return best
-    best = at(narrow)
+    def sound(drawn: Built | None) -> Built | None:
+        return drawn if drawn is not None and meets(job, drawn) else None
+
+    wide, narrow = window.bandwidth_max, window.bandwidth_min
+    if job.design.bandwidth is not None:
+        return sound(at(job.design.bandwidth)) if narrow <= job.design.bandwidth <= wide else None
+    widest_drawn = at(wide)
+    if sound(widest_drawn) is not None:
+        return widest_drawn
+    if form.resonator is not None and widest_drawn is not None and widest_drawn.verdict == "swamped":
+        return None  # a narrower band only strains the parts more, and there are other resonator values
+    best = sound(at(narrow))
     if best is None:
         return None
-    for _ in range(_STEPS):
+    for _ in range(_HALVINGS):
         middle = float(np.sqrt(wide * narrow))
-        built = at(middle)
-        if built is None:
+        drawn = sound(at(middle))
+        if drawn is None:
             wide = middle
         else:
-            best, narrow = built, middle
+            best, narrow = drawn, middle
     return best
 
 
-def meets(job: Job, built: Built) -> bool:
-    """Tell whether the circuit gives every rejection within the loss and flatness limits."""
-    flat = built.action.carrier_most_db - built.midband_db <= job.design.flatness_db + 1e-9
-    return built.short_db >= 0 and built.midband_db <= job.design.loss_db and flat
+def settle_bandwidth(job: Job, drawn: Built, required_db: Array) -> Built:
+    """Build a drawing, a little narrower where as built it falls short; the last try where none meets."""
+    built = realise(job, drawn, required_db)
+    best = built
+    for share in _NARROWER[1:]:
+        narrow = drawn.one_sided or drawn.bandwidth * share < job.floor or job.design.bandwidth is not None
+        if meets(job, built) or narrow or not _short_nearby(job, built, required_db):
+            break
+        narrower = sketch(
+            job,
+            drawn.prototype,
+            drawn.form,
+            centre_hz=drawn.centre_hz,
+            bandwidth=drawn.bandwidth * share,
+            required_db=required_db,
+        )
+        if narrower is None or narrower.midband_db > job.design.loss_db:
+            break
+        built = realise(job, narrower, required_db)
+        best = max(best, built, key=lambda b: (meets(job, b), b.short_db))
+    return best
 
 
-def _realisable(job: Job, result: WindowResult) -> bool:
-    return any(realises(name, result.prototype) for name in expand(job.design.topology))
+def _short_nearby(job: Job, built: Built, required_db: Array) -> bool:
+    """Tell whether what is missing is near the passband, where a narrower band helps."""
+    short = (required_db > 0) & (built.action.rejection_db < required_db)
+    return not bool((short & is_far(job)).any())
 
 
-def _window(result: WindowResult, leak_reason: str, *, buildable: bool) -> Window:
-    """Turn a solver's answer into what the plan shows."""
-    reason = leak_reason or result.reason
-    if result.feasible and not buildable:
-        reason = "an even-order Chebyshev ladder does not end in equal impedances"
-    narrow_hz, wide_hz = (math.sqrt(c[0] * c[1]) for c in (result.centres_min_hz, result.centres_max_hz))
-    return Window(
-        family=result.prototype.family,
-        ripple_db=result.prototype.ripple_db,
-        order=result.prototype.order,
-        bandwidth_min_hz=result.bandwidth_min * narrow_hz,
-        bandwidth_max_hz=result.bandwidth_max * wide_hz,
-        centre_hz=wide_hz,
-        feasible=result.feasible and not leak_reason,
-        reason=reason,
-    )
+def _orders(job: Job) -> range:
+    fixed = job.design.order
+    return range(1, job.design.max_order + 1) if fixed is None else range(fixed, fixed + 1)
 
 
-def _leak_reason(job: Job, required_db: Array, beyond: NDArray[np.bool_]) -> str:
-    worst = int(np.argmax(np.where(beyond, required_db - job.leak_db, -np.inf)))
-    return (
-        f"the line at {job.low_hz[worst] / 1e6:.5g} MHz needs {required_db[worst]:.1f} dB, and the isolation of "
-        f"{job.leak_db[worst]:.0f} dB is counted from the filter's input: a shield is needed, not a resonator"
-    )
+def _prototypes(job: Job) -> Iterator[Prototype]:
+    for family in job.design.families:
+        for order in _orders(job):
+            yield Prototype(family, order, job.design.ripple_db)
 
 
-def _why(best: Built, options: Sequence[Built], order: int) -> str:
-    """Say in one sentence why this filter."""
-    words = f"order {order} is the least with a window; {best.topology} at {best.bandwidth:.1%}"
-    other = next((b for b in options if b.strain > best.strain), None)
-    if other is not None:
-        words += f" strains {sum(best.strain)} parts, {other.prototype.family} {other.topology} {sum(other.strain)}"
+def promise(drawn: Built) -> tuple[float, ...]:
+    """Return what drawings are ranked by: strained parts, loss, parts."""
+    return *drawn.strain, round(drawn.midband_db, 1), drawn.part_count, -drawn.bandwidth
+
+
+def _why(chosen: Built, seen: Sequence[Built]) -> str:
+    """Say in one sentence with numbers why this filter."""
+    words = f"{_described(chosen)}: {_worst_words(chosen)}, {chosen.midband_db:.1f} dB loss"
+    other = next((b for b in seen if b.topology != chosen.topology), None)
+    return words if other is None else f"{_described(other)}: {_worst_words(other)}; {words}"
+
+
+def _described(built: Built) -> str:
+    form = built.form
+    words = f"{form.topology} order {built.prototype.order}"
+    words += f" at {built.centre_hz / 1e6:.4g} MHz" if built.one_sided else f" at {built.bandwidth:.0%}"
+    if form.resonator is not None:
+        words += (
+            f" with {form.resonator * 1e9:.3g} nH"
+            if form.resonator > 1e-10
+            else f" with {form.resonator * 1e12:.3g} pF"
+        )
     return words
 
 
-def _why_not(job: Job, results: Sequence[WindowResult], required_db: Array, carrier_db: float) -> str:
+def _worst_words(built: Built) -> str:
+    """Return what is wrong with a filter's parts, or that nothing is."""
+    if built.short_db < 0:
+        return f"{-built.short_db:.1f} dB short as built"
+    strained = [e for e in built.elements if e.verdict != "ok"]
+    if not strained:
+        return "all ok"
+    worst: ElementReport = max(strained, key=lambda e: (e.verdict == "swamped", e.stray_share))
+    return f"{worst.ref} {worst.reason.split(';')[0]}"
+
+
+def _why_not(job: Job, required_db: Array, carrier_db: float, windows: Sequence[Window], nearest: Built | None) -> str:
     """Say in one sentence why there is no filter."""
-    skirts = skirt_needed_db(required_db, carrier_db, job.leak_db, exponent=job.exponent)
-    beyond = (required_db > 0) & ~np.isfinite(skirts)
+    beyond = (required_db > 0) & ~np.isfinite(skirts_db(job, required_db, carrier_db))
     if beyond.any():
-        return _leak_reason(job, required_db, beyond)
-    feasible = [r for r in results if r.feasible]
-    if feasible:
+        return leak_reason(job, required_db, beyond)
+    if nearest is not None:
+        if nearest.problem:
+            return f"{_described(nearest)}: {nearest.problem}"
+        short = nearest.action.rejection_db - required_db
+        line = int(np.argmin(np.where(required_db > 0, short, np.inf)))
+        if nearest.short_db < 0:
+            return (
+                f"as built the nearest, {_described(nearest)}, gives {nearest.action.rejection_db[line]:.1f} dB at "
+                f"{job.low_hz[line] / 1e6:.5g} MHz where {required_db[line]:.1f} dB is needed"
+            )
+        return f"as built {_described(nearest)} exceeds the loss or flatness limit: {nearest.midband_db:.1f} dB midband"
+    if any(w.feasible for w in windows):
         return "windows exist, but no allowed topology gives the rejections in them as a circuit"
-    reasons = [r.reason for r in results if r.reason]
+    reasons = [w.reason for w in windows if w.reason]
     return reasons[-1] if reasons else "no order has a window"

@@ -4,15 +4,13 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
 from harmonic_planner.chain.assemble import ChainArrays
 from harmonic_planner.chain.leakage import isolation_db, with_leakage
-from harmonic_planner.filters.circuit import Circuit
-from harmonic_planner.filters.response import sweep
 from harmonic_planner.model import Design, Scenario, Stage
 from harmonic_planner.parts.kits import Kit, load_kit
 from harmonic_planner.physics.prototypes import Prototype, bandpass_omega
@@ -23,6 +21,7 @@ Attenuation = Callable[[Array], Array]
 
 SPAN_POINTS = 11
 _LINE_POINTS = 5
+_NEAR = (0.4, 2.2)
 
 
 @dataclass(frozen=True)
@@ -52,10 +51,15 @@ class Job:
     low_hz: Array
     high_hz: Array
     leak_db: Array
-    kit: Kit
+    kits: tuple[Kit, ...]
     unloaded_q: float
     floor: float
     exponent: int
+
+    @property
+    def kit(self) -> Kit:
+        """The preferred kit."""
+        return self.kits[0]
 
     @property
     def design(self) -> Design:
@@ -109,10 +113,10 @@ def make_jobs(scenario: Scenario, chain: ChainArrays) -> tuple[Job, ...]:
     jobs = []
     for i, (stage, arrays) in enumerate(zip(scenario.stages, chain.stages, strict=True)):
         design = stage.design
-        kit = load_kit(design.kit, scenario.folder)
+        kits = tuple(replace(load_kit(name, scenario.folder), name=name) for name in design.kits)
         carrier_hz = (float(chain.low_hz[arrays.carrier]), float(chain.high_hz[arrays.carrier]))
         centre_hz = sum(carrier_hz) / 2
-        floor = kit.bandwidth_floor(tuned=design.tuned, drift=design.drift)
+        floor = min(k.bandwidth_floor(tuned=design.tuned or k.tuned, drift=design.drift) for k in kits)
         jobs.append(
             Job(
                 index=i,
@@ -122,13 +126,18 @@ def make_jobs(scenario: Scenario, chain: ChainArrays) -> tuple[Job, ...]:
                 low_hz=chain.low_hz,
                 high_hz=chain.high_hz,
                 leak_db=isolation_db(design.isolation, chain.high_hz),
-                kit=kit,
-                unloaded_q=design.unloaded_q or kit.unloaded_q(centre_hz),
+                kits=kits,
+                unloaded_q=design.unloaded_q or max(k.unloaded_q(centre_hz) for k in kits),
                 floor=floor if design.min_bandwidth is None else design.min_bandwidth,
                 exponent=chain.exponent,
             )
         )
     return tuple(jobs)
+
+
+def is_far(job: Job) -> NDArray[np.bool_]:
+    """Mark the lines so far from the carrier that a narrower band or more resonators do not help strays, (lines,)."""
+    return (job.high_hz < _NEAR[0] * job.centre_hz) | (job.low_hz > _NEAR[1] * job.centre_hz)
 
 
 def act(job: Job, attenuation: Attenuation) -> Action:
@@ -178,17 +187,6 @@ def no_filter(job: Job) -> Action:
     """Return the action of a through connection."""
     nothing = np.zeros(job.low_hz.size)
     return Action(0.0, 0.0, nothing, nothing)
-
-
-def circuit_attenuation(job: Job, circuit: Circuit, *, unloaded_q: float | None = None) -> Attenuation:
-    """Return the attenuation of `circuit` with the losses of the job's kit, or of one unloaded Q where given."""
-
-    def attenuation(frequency_hz: Array) -> Array:
-        if unloaded_q is not None:
-            return sweep(circuit, frequency_hz, unloaded_q=unloaded_q).attenuation_db
-        return sweep(circuit, frequency_hz, kit=job.kit).attenuation_db
-
-    return attenuation
 
 
 def prototype_attenuation(

@@ -3,11 +3,13 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import dataclass
 
 from harmonic_planner.chain.assemble import Array, ChainArrays, assemble
 from harmonic_planner.chain.levels import carrier_levels
 from harmonic_planner.model import Phases, Plan, Scenario
-from harmonic_planner.planning.choice import Built
+from harmonic_planner.parts.kits import Kit, kit_names, load_kit
+from harmonic_planner.planning.built import Built
 from harmonic_planner.planning.evaluate import Run, beyond_db, run
 from harmonic_planner.planning.jobs import Job, make_jobs, sample
 from harmonic_planner.planning.proposals import NO_ADVICE, Advice, propose
@@ -17,7 +19,20 @@ from harmonic_planner.planning.stage_filter import StageFilter, from_built
 from harmonic_planner.planning.summary import Findings, summarise
 
 
+@dataclass(frozen=True)
+class WorkedOut:
+    """A plan with the circuits behind it, one a stage, None where the stage has none."""
+
+    plan: Plan
+    circuits: tuple[Built | None, ...]
+
+
 def make_plan(scenario: Scenario) -> Plan:
+    """Plan the filters of a whole chain: `work_out` without the circuits."""
+    return work_out(scenario).plan
+
+
+def work_out(scenario: Scenario) -> WorkedOut:
     """Plan the filters of a whole chain.
 
     Parameters
@@ -26,8 +41,8 @@ def make_plan(scenario: Scenario) -> Plan:
 
     Returns
     -------
-    Plan
-        Also where limits cannot be met or parts cannot be built: it says so and why.
+    WorkedOut
+        Also where limits cannot be met or parts cannot be built: the plan says so and why.
 
     Raises
     ------
@@ -43,7 +58,7 @@ def make_plan(scenario: Scenario) -> Plan:
 
     samples = [sample(job, f.attenuation) for job, f in zip(jobs, settled.filters, strict=True)]
     transmissions = [s.transmission for s in samples]
-    return summarise(
+    plan = summarise(
         Findings(
             scenario=scenario,
             chain=chain,
@@ -53,10 +68,11 @@ def make_plan(scenario: Scenario) -> Plan:
             run=run(chain, transmissions),
             other=_run_other_phases(scenario, settled.filters),
             levels=carrier_levels(scenario, [s.carrier_db for s in samples]),
-            advice=_advise(chain, jobs, settled, transmissions, margins_db),
+            advice=_advise(scenario, chain, jobs, settled, transmissions, margins_db),
             checks=run_checks(scenario, chain, jobs, settled, margins_db),
         )
     )
+    return WorkedOut(plan, tuple(f.built for f in settled.filters))
 
 
 def _run_other_phases(scenario: Scenario, filters: Sequence[StageFilter]) -> Run:
@@ -68,6 +84,7 @@ def _run_other_phases(scenario: Scenario, filters: Sequence[StageFilter]) -> Run
 
 
 def _advise(
+    scenario: Scenario,
     chain: ChainArrays,
     jobs: Sequence[Job],
     settled: Settled,
@@ -83,9 +100,16 @@ def _advise(
 
     advice = []
     for job, stage_filter, required_db in zip(jobs, settled.filters, settled.needed.required_db, strict=True):
-        built, choice = stage_filter.built, stage_filter.choice
-        if stage_filter.source != "planned" or built is None or choice is None:
+        built = stage_filter.built
+        if stage_filter.source != "planned" or built is None:
             advice.append(NO_ADVICE)
-        else:
-            advice.append(propose(job, built, choice, required_db, beyond))
+            continue
+        carrier_db = stage_filter.action.carrier_most_db
+        advice.append(propose(job, built, required_db, carrier_db, beyond, _other_kits(scenario, job)))
     return tuple(advice)
+
+
+def _other_kits(scenario: Scenario, job: Job) -> tuple[Kit, ...]:
+    """Return the shipped kits that the stage does not use."""
+    used = {kit.name for kit in job.kits}
+    return tuple(load_kit(name, scenario.folder) for name in kit_names() if name not in used)

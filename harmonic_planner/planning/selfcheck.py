@@ -10,10 +10,13 @@ from numpy.typing import NDArray
 
 from harmonic_planner.chain.assemble import Array, ChainArrays
 from harmonic_planner.chain.budget import with_margin, worst_excess
-from harmonic_planner.filters.response import nodal_sweep, sweep
+from harmonic_planner.filters.built_response import nodal_built, sweep_built
+from harmonic_planner.filters.response import sweep
+from harmonic_planner.filters.topologies import REGISTRY
+from harmonic_planner.filters.topologies.base import no_skew
 from harmonic_planner.model import Scenario
 from harmonic_planner.physics.waveforms import spectrum
-from harmonic_planner.planning.choice import Built
+from harmonic_planner.planning.built import Built
 from harmonic_planner.planning.jobs import Job, prototype_attenuation
 from harmonic_planner.planning.settle import Settled
 
@@ -36,7 +39,7 @@ def run_checks(
     scenario: Scenario, chain: ChainArrays, jobs: Sequence[Job], settled: Settled, margins_db: Sequence[float]
 ) -> tuple[Check, ...]:
     """Run every check on the filters that were settled on; `chain` has the limits as the user gave them."""
-    circuits = [f.built if f.source == "planned" else None for f in settled.filters]
+    circuits = [f.built for f in settled.filters]
     needed = settled.needed
     return (
         check_identity(scenario),
@@ -59,28 +62,29 @@ def check_identity(scenario: Scenario) -> Check:
 
 
 def check_circuits(jobs: Sequence[Job], filters: Sequence[Built | None], needing: Sequence[Array]) -> Check:
-    """Compare the ladder recursion with a nodal solution, losses included, at the carrier and the decisive lines."""
+    """Compare the ladder recursion with a nodal solution of every part and stray, at carrier and decisive lines."""
     worst = 0.0
     for job, built, required_db in zip(jobs, filters, needing, strict=True):
         if built is None:
             continue
         frequency_hz = _decisive(job, required_db)
-        kit = job.kit if job.design.unloaded_q is None else None
-        first = sweep(built.circuit, frequency_hz, kit=kit, unloaded_q=job.design.unloaded_q).attenuation_db
-        second = nodal_sweep(built.circuit, frequency_hz, kit=kit, unloaded_q=job.design.unloaded_q).attenuation_db
+        first = sweep_built(built.circuit, frequency_hz, kit=built.form.kit).attenuation_db
+        second = nodal_built(built.circuit, frequency_hz, kit=built.form.kit).attenuation_db
         worst = max(worst, _difference(first, second))
-    return Check(worst < _CIRCUIT_DB, f"ladder recursion against nodal solution: {worst:.1e} dB off at most")
+    return Check(
+        worst < _CIRCUIT_DB, f"circuits as built, ladder recursion against nodal solution: {worst:.1e} dB off at most"
+    )
 
 
 def check_prototypes(jobs: Sequence[Job], filters: Sequence[Built | None], needing: Sequence[Array]) -> Check:
-    """Compare the lossless ladders with the prototypes' closed form at the decisive lines."""
+    """Compare the lossless ideal ladders with the prototypes' closed form at the decisive lines."""
     worst = 0.0
     for job, built, required_db in zip(jobs, filters, needing, strict=True):
-        if built is None:
+        if built is None or REGISTRY[built.topology].skew_db is not no_skew:
             continue
         frequency_hz = _decisive(job, required_db)
         closed = prototype_attenuation(built.prototype, centre_hz=built.centre_hz, bandwidth=built.bandwidth)
-        worst = max(worst, _difference(sweep(built.circuit, frequency_hz).attenuation_db, closed(frequency_hz)))
+        worst = max(worst, _difference(sweep(built.ideal, frequency_hz).attenuation_db, closed(frequency_hz)))
     return Check(worst < _PROTOTYPE_DB, f"lossless ladders against the prototypes: {worst:.1e} dB off at most")
 
 

@@ -8,26 +8,29 @@ from dataclasses import dataclass
 import numpy as np
 
 from harmonic_planner.chain.assemble import Array, ChainArrays
-from harmonic_planner.chain.assign import Candidates, assign
-from harmonic_planner.chain.budget import Rejections, equal_shares, requirement, with_margin
-from harmonic_planner.filters.windows import least_order
+from harmonic_planner.chain.allocate import allocate
+from harmonic_planner.chain.allocation import Allocation
+from harmonic_planner.chain.budget import Rejections, requirement, with_margin
+from harmonic_planner.chain.screening import Candidates
 from harmonic_planner.model import GivenFilter
-from harmonic_planner.planning.candidates import Candidate, Offer, offer
-from harmonic_planner.planning.choice import buildable_prototypes, look
+from harmonic_planner.planning.candidates import Offer, offer
+from harmonic_planner.planning.choice import able, report_windows
 from harmonic_planner.planning.evaluate import beyond_db
-from harmonic_planner.planning.jobs import Job, sample
+from harmonic_planner.planning.jobs import Job, is_far, sample
 from harmonic_planner.planning.stage_filter import StageFilter, given, held_to, planned, unfiltered
 
 _ROUNDS = 4
 _HEADROOM_DB = 0.02
+_MOST_LEARNED_DB = 4.0
 
 
 @dataclass(frozen=True)
 class Settled:
-    """The filters, and the rejections they are held to."""
+    """The filters, the rejections they are held to, and the joint choice of orders behind them."""
 
     filters: tuple[StageFilter, ...]
     needed: Rejections
+    allocation: Allocation
 
 
 def settle(chain: ChainArrays, jobs: Sequence[Job], margins_db: Sequence[float]) -> Settled:
@@ -53,23 +56,90 @@ def settle(chain: ChainArrays, jobs: Sequence[Job], margins_db: Sequence[float])
     target = with_margin(chain, margins_db)
     filtered = [job.stage.filter != "none" for job in jobs]
     options = [_options(job, chain.grid.count) for job in jobs]
-    start = _first_orders(target, jobs, filtered)
+    learned = [_Learned(np.full(chain.grid.count, np.inf), 0.0) for _ in jobs]
     drawn_in_db = 0.0
-    filters: list[StageFilter] = []
-    picked: list[Candidate | None] = []
+    best: _Round | None = None
     for _ in range(_ROUNDS):
         tight = with_margin(target, [drawn_in_db] * len(jobs))
-        chosen = assign(tight, [o.rows for o in options], start)
-        spec = requirement(tight, chosen.rejections([o.rows for o in options]), filtered)
-        picked = [o.candidate(n, p) for o, n, p in zip(options, chosen.orders, chosen.picks, strict=True)]
-        filters = [_filter(job, o, p, r) for job, o, p, r in zip(jobs, options, picked, spec.required_db, strict=True)]
-        short_db = -_beyond_db(chain, jobs, filters, margins_db)
-        if short_db <= 0 or not chosen.met or spec.out_of_reach.any() or not all(f.meets for f in filters):
+        rows = [_within(o.rows, known) for o, known in zip(options, learned, strict=True)]
+        chosen = allocate(tight, rows)
+        if not chosen.met:  # where strays are the obstacle, ask for what ideal filters would share
+            ideal_rows = [o.ideal for o in options]
+            ideal = allocate(tight, ideal_rows)
+            if ideal.met or not _same_obstacle(ideal, chosen):
+                rows, chosen = ideal_rows, ideal
+        spec = requirement(tight, chosen.rejections(rows), filtered)
+        losses = [o.carrier_db(n, p) for o, n, p in zip(options, chosen.orders, chosen.picks, strict=True)]
+        filters = [
+            o.fixed or planned(job, r, carrier_db=loss)
+            for job, o, r, loss in zip(jobs, options, spec.required_db, losses, strict=True)
+        ]
+        beyond = _beyond_db(chain, jobs, filters, margins_db)
+        this = _Round(tuple(filters), tuple(losses), beyond, chosen)
+        if best is not None and this.rank >= best.rank:
             break
-        drawn_in_db += short_db + _HEADROOM_DB
-    filters, needed = _lowered(chain, target, jobs, filters, picked, margins_db)
+        best = this
+        if this.failing and not spec.out_of_reach.any():
+            for i in this.failing:
+                learned[i] = _learn(jobs[i], learned[i], filters[i], spec.required_db[i])
+            continue
+        if beyond >= 0 or this.failing or spec.out_of_reach.any():
+            break
+        drawn_in_db += _HEADROOM_DB - beyond
+    assert best is not None
+    filters, losses = list(best.filters), list(best.losses)
+    filters, needed = _lowered(chain, target, jobs, filters, options, losses, margins_db)
     held = (held_to(job, f, r) for job, f, r in zip(jobs, filters, needed.required_db, strict=True))
-    return Settled(tuple(held), needed)
+    return Settled(tuple(held), needed, best.chosen)
+
+
+@dataclass(frozen=True)
+class _Round:
+    """One try at all stages: the filters, the carrier losses they were judged with, and the margin beyond what is asked."""
+
+    filters: tuple[StageFilter, ...]
+    losses: tuple[float, ...]
+    beyond_db: float
+    chosen: Allocation
+
+    @property
+    def failing(self) -> list[int]:
+        """Stages whose filter does not do, as built, what it was chosen for."""
+        return [i for i, f in enumerate(self.filters) if not f.meets]
+
+    @property
+    def rank(self) -> tuple[int, float]:
+        """Fewer failing stages are better, then more margin."""
+        return len(self.failing), -self.beyond_db
+
+
+@dataclass(frozen=True)
+class _Learned:
+    """What circuits as built taught of a stage: a ceiling at far lines, and how much every skirt falls short [dB]."""
+
+    ceiling_db: Array
+    short_db: float
+
+
+def _within(rows: Candidates, known: _Learned) -> Candidates:
+    """Return the rejections as circuits were seen to give them."""
+    return {n: np.minimum(np.maximum(r - known.short_db, 0.0), known.ceiling_db) for n, r in rows.items()}
+
+
+def _learn(job: Job, known: _Learned, stage_filter: StageFilter, required_db: Array) -> _Learned:
+    """Take from a filter that fell short what holds for its neighbours too.
+
+    At far lines strays are the limit, whatever the order: the ceiling comes down to what was seen. Near the passband
+    parts on a grid and absorbed strays cost skirt: every candidate is taken to lose as much.
+    """
+    achieved = stage_filter.action.rejection_db
+    short_db = np.where(required_db > 0, required_db - achieved, 0.0)
+    far = is_far(job) & (short_db > 0)
+    ceiling_db = np.where(far, np.minimum(known.ceiling_db, np.maximum(achieved, 0.0)), known.ceiling_db)
+    near_db = float(np.max(short_db[~is_far(job)], initial=0.0))
+    return _Learned(
+        ceiling_db, known.short_db + (min(near_db, _MOST_LEARNED_DB) + _HEADROOM_DB if near_db > 0 else 0.0)
+    )
 
 
 def _lowered(
@@ -77,7 +147,8 @@ def _lowered(
     target: ChainArrays,
     jobs: Sequence[Job],
     filters: Sequence[StageFilter],
-    picked: Sequence[Candidate | None],
+    options: Sequence[_Options],
+    losses: Sequence[float],
     margins_db: Sequence[float],
 ) -> tuple[list[StageFilter], Rejections]:
     """Take a lower order wherever what the circuits now do leaves a window for it, and the chain confirms it."""
@@ -89,11 +160,11 @@ def _lowered(
     improved = True
     while improved:
         improved = False
-        for i, (job, candidate) in enumerate(zip(jobs, picked, strict=True)):
-            if candidate is None:
+        for i, (job, option) in enumerate(zip(jobs, options, strict=True)):
+            if option.fixed is not None or not _window_below(job, current[i], needed.required_db[i], losses[i]):
                 continue
-            trial = planned(job, candidate, needed.required_db[i])
-            if not trial.meets or _order(trial) >= _order(current[i]):
+            trial = planned(job, needed.required_db[i], carrier_db=losses[i])
+            if not trial.meets or _order(trial) >= _order(current[i]) or _strain(trial) > _strain(current[i]):
                 continue
             changed = [*current[:i], trial, *current[i + 1 :]]
             if _beyond_db(chain, jobs, changed, margins_db) >= 0 or needed.out_of_reach.any():
@@ -102,8 +173,18 @@ def _lowered(
     return current, needed
 
 
+def _window_below(job: Job, stage_filter: StageFilter, required_db: Array, carrier_db: float) -> bool:
+    """Tell whether a lower order has a window, by its prototype, for what is now required."""
+    windows = report_windows(job, required_db, carrier_db=carrier_db)
+    return any(w.feasible and w.order < _order(stage_filter) for w in windows)
+
+
+def _strain(stage_filter: StageFilter) -> int:
+    return 0 if stage_filter.built is None else stage_filter.built.strain[0]
+
+
 def _order(stage_filter: StageFilter) -> int:
-    return 0 if stage_filter.prototype is None else stage_filter.prototype.order
+    return 0 if stage_filter.built is None else stage_filter.built.resonators
 
 
 def _beyond_db(
@@ -116,15 +197,16 @@ def _beyond_db(
 
 @dataclass(frozen=True)
 class _Options:
-    """What one stage can be: fixed, or a choice of candidates; `rows` is order -> rejections."""
+    """What one stage can be: fixed, or a choice of candidates; order -> rejections, with strays and without."""
 
     fixed: StageFilter | None
     offered: Offer
     rows: Candidates
+    ideal: Candidates
 
-    def candidate(self, order: int, pick: int) -> Candidate | None:
-        """Return the filter behind a row, None where there was nothing to choose."""
-        return self.offered.filters[order][pick] if order in self.offered.filters else None
+    def carrier_db(self, order: int, pick: int) -> float:
+        """Return the carrier loss that goes with a row; 0 where there was nothing to choose."""
+        return self.offered.filters[order][pick].carrier_db if order in self.offered.filters else 0.0
 
 
 def _options(job: Job, count: int) -> _Options:
@@ -134,31 +216,19 @@ def _options(job: Job, count: int) -> _Options:
     elif job.stage.filter == "none":
         fixed = unfiltered(job)
     else:
-        offered = offer(job, buildable_prototypes(job))
+        offered = offer(job, able(job))
         if offered.filters:
-            return _Options(None, offered, offered.rejections_db)
-        return _Options(unfiltered(job, wanted=True, reason=_no_carrier(job)), offered, {0: np.zeros((1, count))})
-    return _Options(fixed, Offer({}, {}), {0: fixed.action.rejection_db[None, :]})
+            return _Options(None, offered, offered.rejections_db, offered.ideal_db)
+        nothing = {0: np.zeros((1, count))}
+        return _Options(unfiltered(job, wanted=True, reason=_no_carrier(job)), offered, nothing, nothing)
+    only = {0: fixed.action.rejection_db[None, :]}
+    return _Options(fixed, Offer({}, {}, {}), only, only)
 
 
-def _filter(job: Job, options: _Options, candidate: Candidate | None, required_db: Array) -> StageFilter:
-    """Return the stage's filter for this requirement."""
-    if options.fixed is not None or candidate is None:
-        return options.fixed or unfiltered(job)
-    return planned(job, candidate, required_db)
-
-
-def _first_orders(chain: ChainArrays, jobs: Sequence[Job], filtered: Sequence[bool]) -> list[int]:
-    """Return the least order at each stage for equal shares, the most allowed where there is none."""
-    orders = []
-    for job, required_db in zip(jobs, equal_shares(chain, filtered), strict=True):
-        if job.stage.filter != "plan":
-            orders.append(0)
-            continue
-        _, results, _ = look(job, required_db, carrier_db=job.design.flatness_db)
-        least = least_order(results)
-        orders.append(job.design.max_order if least is None else least.prototype.order)
-    return orders
+def _same_obstacle(one: Allocation, other: Allocation) -> bool:
+    """Tell whether two allocations fail at the same limit."""
+    a, b = one.obstacle, other.obstacle
+    return a is not None and b is not None and (a.kind, a.to, a.line) == (b.kind, b.to, b.line)
 
 
 def _no_carrier(job: Job) -> str:

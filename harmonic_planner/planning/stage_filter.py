@@ -10,15 +10,14 @@ import numpy as np
 from harmonic_planner.filters.topologies import expand
 from harmonic_planner.model import FilterSource, GivenFilter, PlannerError
 from harmonic_planner.physics.prototypes import Prototype
-from harmonic_planner.planning.candidates import Candidate
-from harmonic_planner.planning.choice import Built, Choice, build, choose, look
+from harmonic_planner.planning.built import Built, Form, as_built, lossless, realise, sketch
+from harmonic_planner.planning.choice import Choice, choose, report_windows
 from harmonic_planner.planning.jobs import (
     Action,
     Array,
     Attenuation,
     Job,
     act,
-    circuit_attenuation,
     no_filter,
     prototype_attenuation,
 )
@@ -33,7 +32,7 @@ class StageFilter:
     attenuation : callable or None
         As built; None for a through connection.
     ideal : callable or None
-        Of the lossless prototype.
+        Of the lossless circuit with its ideal elements, or of the lossless prototype without one.
     built : Built or None
         The circuit, where there is one.
     choice : Choice or None
@@ -60,15 +59,13 @@ def unfiltered(job: Job, *, wanted: bool = False, reason: str = "") -> StageFilt
     return StageFilter("planned" if wanted else "none", no_filter(job), meets=not wanted, reason=reason)
 
 
-def from_built(
-    job: Job, built: Built, *, source: FilterSource = "planned", unloaded_q: float | None = None
-) -> StageFilter:
-    """Return a circuit in its place, with the kit's losses or one unloaded Q."""
+def from_built(job: Job, built: Built, *, source: FilterSource = "planned") -> StageFilter:
+    """Return a circuit in its place."""
     return StageFilter(
         source,
         built.action,
-        circuit_attenuation(job, built.circuit, unloaded_q=unloaded_q or job.design.unloaded_q),
-        prototype_attenuation(built.prototype, centre_hz=built.centre_hz, bandwidth=built.bandwidth),
+        as_built(job, built.circuit, built.form),
+        lossless(built.ideal),
         built.prototype,
         built.centre_hz,
         built.bandwidth,
@@ -98,39 +95,31 @@ def given(job: Job, description: GivenFilter) -> StageFilter:
         job = replace(job, stage=replace(job.stage, design=replace(job.design, unloaded_q=description.unloaded_q)))
     nothing = np.zeros(job.low_hz.size)
     for name in expand([description.topology]):
-        built = build(job, prototype, name, centre_hz=centre_hz, bandwidth=bandwidth, required_db=nothing)
-        if built is not None:
-            return replace(from_built(job, built, source="given"), reason="given")
+        form = Form(name, job.kit, job.design.impedance_ohm, job.design.resonator_h or job.design.resonator_f)
+        drawn = sketch(job, prototype, form, centre_hz=centre_hz, bandwidth=bandwidth, required_db=nothing)
+        if drawn is not None:
+            return replace(from_built(job, realise(job, drawn, nothing), source="given"), reason="given")
     raise PlannerError(
         f"stage[{job.index + 1}].filter.topology = {description.topology!r}: cannot realise {prototype.family} order "
         f"{prototype.order} between equal impedances; an odd order or butterworth can"
     )
 
 
-def planned(job: Job, picked: Candidate, required_db: Array) -> StageFilter:
+def planned(job: Job, required_db: Array, *, carrier_db: float) -> StageFilter:
     """Choose the filter that gives `required_db`; where there is none, the nearest one and why it falls short.
 
     Parameters
     ----------
     job : Job
-    picked : Candidate
-        What the budget relied on; its carrier loss is what leakage is judged against.
     required_db : (lines,) float
+    carrier_db : float
+        The carrier's loss that leakage is judged against [dB].
     """
-    choice = choose(job, required_db, carrier_db=picked.carrier_db)
+    choice = choose(job, required_db, carrier_db=carrier_db)
     if choice.built is not None:
         return replace(from_built(job, choice.built), choice=choice, reason=choice.reason)
-    for name in expand(job.design.topology):
-        built = build(
-            job,
-            picked.prototype,
-            name,
-            centre_hz=picked.centre_hz,
-            bandwidth=picked.bandwidth,
-            required_db=required_db,
-        )
-        if built is not None:
-            return replace(from_built(job, built), choice=choice, meets=False, reason=choice.reason)
+    if choice.best is not None:
+        return replace(from_built(job, choice.best), choice=choice, meets=False, reason=choice.reason)
     return replace(unfiltered(job, wanted=True, reason=choice.reason), choice=choice)
 
 
@@ -138,5 +127,5 @@ def held_to(job: Job, stage_filter: StageFilter, required_db: Array) -> StageFil
     """Return the filter with the windows that the final requirement gives."""
     if stage_filter.choice is None:
         return stage_filter
-    task, results, windows = look(job, required_db, carrier_db=stage_filter.action.carrier_most_db)
-    return replace(stage_filter, choice=replace(stage_filter.choice, task=task, results=results, windows=windows))
+    windows = report_windows(job, required_db, carrier_db=stage_filter.action.carrier_most_db)
+    return replace(stage_filter, choice=replace(stage_filter.choice, windows=windows))

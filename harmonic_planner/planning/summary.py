@@ -3,14 +3,16 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
 from harmonic_planner.chain.assemble import Array, ChainArrays
 from harmonic_planner.chain.levels import CarrierLevels
-from harmonic_planner.filters.response import sweep
+from harmonic_planner.filters.stress import stress
 from harmonic_planner.model import (
+    AllocationPlan,
+    ElementReport,
     FilterPlan,
     LineLevel,
     OutputPlan,
@@ -21,6 +23,7 @@ from harmonic_planner.model import (
     StagePlan,
 )
 from harmonic_planner.physics.noise import phase_noise
+from harmonic_planner.planning.built import Built, response
 from harmonic_planner.planning.evaluate import FAINTEST_DBC, Run, output_lines, worst_db
 from harmonic_planner.planning.jobs import Job, act
 from harmonic_planner.planning.notes import assumptions_for, cautions_for, warnings_for
@@ -89,7 +92,16 @@ def summarise(f: Findings) -> Plan:
         source_lines=_lines(f.chain, f.chain.source),
         output=output,
         stages=stages,
+        allocation=_allocation(f),
     )
+
+
+def _allocation(f: Findings) -> AllocationPlan:
+    """Return the count of resonators as built against what the joint search proved for its candidates."""
+    found = f.settled.allocation
+    total = sum(x.built.resonators for x in f.settled.filters if x.source == "planned" and x.built is not None)
+    proven = found.proven and found.met and total == found.total
+    return AllocationPlan(total, found.lower_bound, proven, found.nodes)
 
 
 def _stage(f: Findings, i: int) -> StagePlan:
@@ -119,6 +131,7 @@ def _lines(chain: ChainArrays, comb: Array) -> tuple[LineLevel, ...]:
 
 def _filter(f: Findings, i: int) -> FilterPlan:
     job, chosen, advice = f.jobs[i], f.settled.filters[i], f.advice[i]
+    built = chosen.built
     if chosen.attenuation is None or chosen.prototype is None or chosen.centre_hz is None or chosen.bandwidth is None:
         return FilterPlan(source=chosen.source, reason=chosen.reason)
     highest = max(4 * chosen.centre_hz, 1.1 * _highest_needed(job, f.settled.needed.required_db[i]))
@@ -129,16 +142,19 @@ def _filter(f: Findings, i: int) -> FilterPlan:
         family=chosen.prototype.family,
         ripple_db=chosen.prototype.ripple_db,
         order=chosen.prototype.order,
-        topology=None if chosen.built is None else chosen.built.topology,
+        topology=None if built is None else built.topology,
         centre_hz=chosen.centre_hz,
         bandwidth_hz=chosen.bandwidth * chosen.centre_hz,
         loss_db=float(chosen.attenuation(np.array([chosen.centre_hz]))[0]),
         return_loss_db=_return_loss_db(job, chosen),
         unloaded_q=job.unloaded_q,
+        kit=None if built is None else built.form.kit.name,
+        impedance_ohm=job.design.impedance_ohm if built is None else built.form.impedance_ohm,
+        resonator=None if built is None else built.form.resonator,
         reason=chosen.reason,
         requirement=_requirement(f, i),
         windows=chosen.choice.windows if chosen.choice is not None else (),
-        elements=chosen.built.elements if chosen.built is not None else (),
+        elements=() if built is None else _elements(job, built, float(f.levels[i].filter_input_dbm.max())),
         proposals=advice.proposals,
         proposals_note=advice.note,
         response_hz=tuple(float(x) for x in response_hz),
@@ -172,15 +188,39 @@ def _requirement(f: Findings, i: int) -> tuple[Requirement, ...]:
     )
 
 
+def _elements(job: Job, built: Built, power_dbm: float) -> tuple[ElementReport, ...]:
+    """Return every part with what is bought for it and what it bears at the stage's power."""
+    borne = {
+        s.ref: s
+        for s in stress(built.circuit, built.form.kit, frequency_hz=job.carrier_hz, power_dbm=power_dbm, points=11)
+    }
+    bought = {
+        e.ref: parts
+        for e, parts in zip(
+            built.circuit.elements, built.parts or [(e.value,) for e in built.circuit.elements], strict=True
+        )
+    }
+    return tuple(
+        replace(
+            element,
+            bought=bought[element.ref],
+            peak_v=borne[element.ref].worst_peak_voltage_v,
+            rms_a=borne[element.ref].worst_rms_current_a,
+            rated_v=borne[element.ref].voltage_rating_v,
+            rated_a=borne[element.ref].current_rating_a,
+        )
+        for element in built.elements
+    )
+
+
 def _return_loss_db(job: Job, chosen: StageFilter) -> float | None:
     """Return the least return loss over the carrier's span and drift, of the circuit."""
     if chosen.built is None:
         return None
     low, high = job.carrier_hz[0] / (1 + job.design.drift), job.carrier_hz[1] / (1 - job.design.drift)
     frequency_hz = np.linspace(low, high, _EDGE_POINTS)
-    q = job.design.unloaded_q
-    response = sweep(chosen.built.circuit, frequency_hz, kit=job.kit if q is None else None, unloaded_q=q)
-    return float(response.return_loss_db.min())
+    found = response(job, chosen.built.circuit, chosen.built.form, frequency_hz)
+    return float(found.return_loss_db.min())
 
 
 def _phase_noise(f: Findings) -> tuple[PhaseNoisePoint, ...]:

@@ -37,7 +37,7 @@ def sentence(
     to, k = np.unravel_index(int(np.argmin(over)), over.shape)
     where = "at the output" if to == len(chain.stages) - 1 else f"behind {scenario.stages[to].name}"
     line = chain.grid.line(int(k))
-    resonators = sum(s.filter.order or 0 for s in stages if s.filter.source == "planned")
+    resonators = sum(f.built.resonators for f in settled.filters if f.source == "planned" and f.built is not None)
     count = sum(s.filter.source == "planned" for s in stages)
     if met:
         limits = (

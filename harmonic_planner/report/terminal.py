@@ -9,7 +9,8 @@ from rich.table import Table
 from rich.text import Text
 
 from harmonic_planner.export.nodes import line_frequency_hz, origins_text
-from harmonic_planner.model import VERDICT_RANK, ElementVerdict, LineLevel, OutputLine, Plan, Proposal, StagePlan
+from harmonic_planner.export.proposals import NumberedProposal, numbered_proposals
+from harmonic_planner.model import VERDICT_RANK, ElementVerdict, LineLevel, OutputLine, Plan, StagePlan
 from harmonic_planner.report.text import (
     decibels,
     filter_name,
@@ -145,10 +146,10 @@ def _bullets(screen: Console, title: str, texts: Sequence[str]) -> None:
         _bullet(screen, Text(printable(text)))
 
 
-def _bullet(screen: Console, text: Text) -> None:
-    """Show one sentence, indented behind a dash."""
+def _bullet(screen: Console, text: Text, mark: str = "-") -> None:
+    """Show one sentence, indented behind a dash or another mark."""
     grid = Table.grid(padding=(0, 1, 0, 0))
-    grid.add_row("-", text)
+    grid.add_row(mark, text)
     screen.print(grid)
 
 
@@ -243,24 +244,33 @@ def _flags(plan: Plan, screen: Console) -> None:
 
 
 def _proposals(plan: Plan, screen: Console) -> None:
-    """Show what would help each stage whose filter is doubtful, as found by designing it anew."""
-    stages = [stage for stage in plan.stages if stage.filter.proposals or stage.filter.proposals_note]
-    if not stages:
+    """Show what would help each stage whose filter is doubtful, with the numbers under which `apply` takes it."""
+    numbered = numbered_proposals(plan)
+    if not numbered and not any(stage.filter.proposals_note for stage in plan.stages):
         return
     screen.print()
     screen.print(Text("What would help (each designed anew and run through the chain)", style="bold"))
-    for stage in stages:
-        name, every = printable(stage.name), stage.filter.proposals
-        for proposal in [proposal for proposal in every if proposal.buildable][:_PROPOSALS_PER_STAGE]:
-            _bullet(screen, _proposal_text(name, proposal))
+    shown = 0
+    for i, stage in enumerate(plan.stages):
+        name, every = printable(stage.name), [each for each in numbered if each.stage_index == i]
+        best = [each for each in every if each.proposal.buildable][:_PROPOSALS_PER_STAGE]
+        shown += len(best)
+        for each in best:
+            _bullet(screen, _proposal_text(name, each), mark=f"{each.number}.")
         if stage.filter.proposals_note:
             _bullet(screen, Text(f"{name}: {printable(stage.filter.proposals_note)}"))
-        elif not any(proposal.buildable for proposal in every):
+        elif every and not best:
             _bullet(screen, Text(f"{name}: nothing that was tried can be built; plan.json says what was"))
+    if numbered:
+        more = (
+            f" ({len(numbered) - shown} more, counted in the same order, in plan.json)" if len(numbered) > shown else ""
+        )
+        screen.print(f"Take one with its number: harmonic-planner apply SCENARIO N{more}")
 
 
-def _proposal_text(stage_name: str, proposal: Proposal) -> Text:
+def _proposal_text(stage_name: str, numbered: NumberedProposal) -> Text:
     """Say one proposal with what it buys and costs."""
+    proposal = numbered.proposal
     text = Text(
         f"{stage_name}: {printable(proposal.change)}: {filter_name(proposal.family, proposal.order)} "
         f"{proposal.topology}, {100 * proposal.bandwidth_hz / proposal.centre_hz:.1f} % at "
@@ -270,6 +280,7 @@ def _proposal_text(stage_name: str, proposal: Proposal) -> Text:
     part = printable(proposal.worst_element).partition(":")[0]
     text.append(f" ({part})" if part else "")
     text.append(f", least output margin {decibels(proposal.worst_margin_db, signed=True)} dB")
+    text.append(f"; price: {printable(proposal.price)}" if proposal.price else "")
     return text
 
 

@@ -1,8 +1,7 @@
-"""Rejections that suffice together and of which none can be lowered alone, and the orders that give them."""
+"""Rejections that suffice together and of which none can be lowered alone."""
 
 from __future__ import annotations
 
-import itertools
 from fractions import Fraction
 
 import numpy as np
@@ -11,8 +10,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from harmonic_planner.chain.assemble import ChainArrays, assemble
-from harmonic_planner.chain.assign import assign
-from harmonic_planner.chain.budget import equal_shares, requirement, with_margin, worst_excess
+from harmonic_planner.chain.budget import requirement, with_margin, worst_excess
 from harmonic_planner.model import Amplifier
 
 from builders import chain_of, with_amplifier
@@ -84,37 +82,3 @@ def test_filters_that_fall_short_have_a_negative_surplus_and_a_requirement_above
     found = requirement(chain, weak, [True, True])
     assert found.surplus_db < 0
     assert any((r > w + 1).any() for r, w in zip(found.required_db, weak, strict=True))
-
-
-def test_equal_shares_of_one_contribution_is_the_whole_limit() -> None:
-    chain = assemble(chain_of(2, limit_dbc=-50), phases="worst-case")
-    share = equal_shares(chain, [True])[0]
-    assert share == pytest.approx(
-        requirement(chain, [np.full(chain.grid.count, 150.0)], [True]).required_db[0], abs=1e-6
-    )
-
-
-@pytest.mark.parametrize("seed", range(20))
-def test_assignment_is_never_under_designed_and_close_to_enumeration(seed: int) -> None:
-    """Greedy tightening and relaxing against every combination of orders."""
-    rng = np.random.default_rng(seed)
-    factors = (3, 2, 2) if seed % 2 else (2, 3)
-    chain = assemble(chain_of(*factors, lines=SOURCE, limit_dbc=-55), phases="worst-case")
-    tables = [
-        {
-            n: np.array([_skirts(chain, np.random.default_rng([seed, c]), (n,) * len(factors))[i] for c in range(2)])
-            for n in range(1, 6)
-        }
-        for i in range(len(factors))
-    ]
-    found = assign(chain, tables, [int(n) for n in rng.integers(1, 6, len(factors))])
-    totals = []
-    for orders in itertools.product(range(1, 6), repeat=len(factors)):
-        for picks in itertools.product(range(2), repeat=len(factors)):
-            rows = [t[n][p] for t, n, p in zip(tables, orders, picks, strict=True)]
-            if (worst_excess(chain, rows) <= 1).all():
-                totals.append(sum(orders))
-    assert found.met == bool(totals) or not totals  # limits out of anybody's reach are set aside
-    if totals:
-        assert (worst_excess(chain, found.rejections(tables)) <= 1).all()
-        assert min(totals) <= sum(found.orders) <= min(totals) + 1

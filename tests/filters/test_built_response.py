@@ -2,8 +2,6 @@
 
 import functools
 import math
-import os
-import shutil
 import subprocess
 from dataclasses import replace
 from pathlib import Path
@@ -12,6 +10,7 @@ import numpy as np
 import pytest
 import skrf
 from built_circuits import around, kits, random_ladders, without_losses, without_strays
+from conftest import external_program
 from hypothesis import given, settings
 from hypothesis import strategies as st
 from scipy.optimize import brentq
@@ -296,15 +295,6 @@ def test_group_delay_needs_three_frequencies_in_order(frequency):
         _ = Response(np.array(frequency), values, values).group_delay_s
 
 
-def simulator() -> str:
-    found = shutil.which("ngspice")
-    if found is None:
-        if os.environ.get("HARMONIC_PLANNER_REQUIRE_EXTERNAL"):
-            pytest.fail("ngspice is required and not installed")
-        pytest.skip("ngspice is not installed")
-    return found
-
-
 @pytest.mark.external
 @pytest.mark.parametrize(("name", "order", "kit_name"), [
     ("ladder-series", 3, "chip-1008"),
@@ -332,7 +322,9 @@ def test_a_circuit_simulator_finds_the_same_response(tmp_path: Path, name: str, 
         ]
     )
     (tmp_path / "deck.cir").write_text(deck + "\n", encoding="utf-8")
-    subprocess.run([simulator(), "-b", "deck.cir"], cwd=tmp_path, check=True, capture_output=True, timeout=60)
+    subprocess.run(
+        [external_program("ngspice"), "-b", "deck.cir"], cwd=tmp_path, check=True, capture_output=True, timeout=60
+    )
     table = np.loadtxt(tmp_path / "found.txt")
     s21 = 2 * (table[:, 1] + 1j * table[:, 2])
     found = sweep_built(circuit, np.linspace(low, high, points), kit=kit, frozen_at_hz=240e6)

@@ -9,7 +9,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from harmonic_planner.filters import topologies
-from harmonic_planner.filters.circuit import Circuit, Element
+from harmonic_planner.filters.circuit import Circuit, CircuitError, Element
 from harmonic_planner.filters.flags import judge, worst
 from harmonic_planner.model import VERDICT_RANK
 from harmonic_planner.parts.kits import load_kit
@@ -135,6 +135,33 @@ def test_a_report_carries_the_element_and_its_q():
     # independent: by hand, X = 10.2 Ω, R = 0.0003 X + 0.1 sqrt(240/500)
     reactance = 1 / (2 * math.pi * 240e6 * 65e-12)
     assert report.q == pytest.approx(reactance / (0.0003 * reactance + 0.1 * math.sqrt(0.48)), rel=1e-9)
+
+
+# independent: by hand, 30 % of 0.35 nH over L
+@pytest.mark.parametrize(
+    "inductance_h, left, verdict",
+    [(1.06e-9, 0.105 / 1.06, "ok"), (1.04e-9, 0.105 / 1.04, "marginal"), (0.41e-9, 0.105 / 0.41, "swamped")],
+)
+def test_an_absorbed_stray_counts_by_its_own_tolerance(inductance_h, left, verdict):
+    ideal = Circuit("test", (Element("L1", "L", ("in", "0"), inductance_h),), 100e6, 50.0, 50.0)
+    bought = dataclasses.replace(ideal, elements=(Element("L1", "L", ("in", "0"), 1.2e-9),))
+    (report,) = judge(ideal, KIT, nominal=bought)
+    assert report.stray_share == pytest.approx(left)
+    assert report.verdict == verdict
+    assert (report.ideal, report.nominal) == (inductance_h, 1.2e-9)
+    assert report.reason.startswith(f"strays {0.35e-7 / inductance_h:.3g} % (0.35 nH of via and mounting in ")
+    assert report.reason.split("; ")[0].endswith(f"absorbed to {left * 100:.3g} %")
+
+
+def test_range_and_self_resonance_are_those_of_what_is_bought():
+    ideal = Circuit("test", (Element("L1", "L", ("in", "0"), 1.3e-9),), 100e6, 50.0, 50.0)
+    bought = dataclasses.replace(ideal, elements=(Element("L1", "L", ("in", "0"), 0.95e-9),))
+    (report,) = judge(ideal, KIT, nominal=bought)
+    assert report.reason.startswith("not available: 0.95 nH is below the kit's 1 nH")
+    assert report.self_resonance_hz == pytest.approx(KIT.inductor.self_resonance_hz(0.95e-9))
+    other = dataclasses.replace(ideal, elements=(Element("L2", "L", ("in", "0"), 1e-9),))
+    with pytest.raises(CircuitError, match="L1 has no nominal value"):
+        judge(ideal, KIT, nominal=other)
 
 
 def test_without_a_centre_the_circuits_own_is_taken():

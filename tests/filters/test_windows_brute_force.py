@@ -23,7 +23,7 @@ from harmonic_planner.physics.prototypes import Prototype
 
 CHUNK = 25
 CHUNKS = 40 if is_long() else 6
-BANDWIDTHS, CENTRES, DENSE = (60, 61, 33) if is_long() else (40, 41, 33)
+BANDWIDTHS, CENTRES, DENSE = (60, 61, 33) if is_long() else (30, 31, 33)
 ROUNDING_DB = 1e-6
 
 

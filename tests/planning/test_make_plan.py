@@ -287,7 +287,7 @@ def test_phase_noise_rises_by_20_log_n(plan: Plan) -> None:
 
 
 def test_unbuildable_parts_are_named_and_every_proposal_is_verified() -> None:
-    scenario = chain_of(2, 2, source_hz=(300e6, 300e6), design=replace(DESIGN, kit="chip-0603", min_bandwidth=0.1))
+    scenario = chain_of(2, 2, source_hz=(300e6, 300e6), design=replace(DESIGN, kits=("chip-0603",), min_bandwidth=0.1))
     plan = make_plan(scenario)
     assert plan.exit_status == 3
     assert not plan.buildable
@@ -299,7 +299,7 @@ def test_unbuildable_parts_are_named_and_every_proposal_is_verified() -> None:
 
 
 def test_a_proposal_taken_as_a_given_filter_keeps_the_margin_it_promised() -> None:
-    scenario = chain_of(2, source_hz=(150e6, 150e6), design=replace(DESIGN, kit="chip-0603", min_bandwidth=0.08))
+    scenario = chain_of(2, source_hz=(150e6, 150e6), design=replace(DESIGN, kits=("chip-0603",), min_bandwidth=0.08))
     s = make_plan(scenario).stages[0]
     assert s.filter.proposals
     p = s.filter.proposals[0]

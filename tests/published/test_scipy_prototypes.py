@@ -74,7 +74,7 @@ def symmetrical(*, half_band: float, half_stop: float, rejection_db: float, flat
     )
 
 
-@settings(max_examples=120, deadline=None)
+@settings(max_examples=60, deadline=None)
 @given(
     half_band=st.floats(0.005, 0.05),
     selectivity=st.floats(1.5, 20.0),
@@ -90,7 +90,7 @@ def test_least_butterworth_order(half_band, selectivity, rejection_db, flatness_
     assert (best.prototype.order if best else None) == (order if order <= 12 else None)
 
 
-@settings(max_examples=120, deadline=None)
+@settings(max_examples=60, deadline=None)
 @given(
     order=st.integers(1, 9),
     half_band=st.floats(0.005, 0.05),

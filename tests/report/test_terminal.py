@@ -94,6 +94,20 @@ def test_proposals_warnings_cautions_checks_and_assumptions_are_there():
     assert "2 assumptions" in text
 
 
+def test_proposals_carry_the_numbers_under_which_they_are_taken_and_their_price():
+    (one,) = doubler().filter.proposals
+    several = tuple(replace(one, change=f"change {i}", price=f"{i} dB of loss") for i in range(4))
+    stages = tuple(
+        replace(doubler(), name=name, filter=replace(doubler().filter, proposals=several)) for name in ("d", "e")
+    )
+    text = shown(plan=replace(example_plan(), stages=stages))
+    rows = [row for row in text.splitlines() if "change" in row]
+    assert [row.split(":")[0] for row in rows] == ["1. d", "2. d", "5. e", "6. e"]
+    assert "price: 0 dB of loss" in words(text)
+    assert "harmonic-planner apply SCENARIO N (4 more, counted in the same order, in plan.json)" in words(text)
+    assert "more" not in words(shown()).partition("apply SCENARIO N")[2].partition("Self-check")[0]
+
+
 def test_a_stage_for_which_nothing_helps_says_so():
     filter_plan = replace(doubler().filter, proposals=(), proposals_note="no ladder can be built here")
     plan = replace(example_plan(), stages=(replace(doubler(), name="d", filter=filter_plan),))

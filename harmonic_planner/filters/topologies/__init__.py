@@ -7,7 +7,15 @@ from collections.abc import Iterable, Mapping
 from types import MappingProxyType
 
 from harmonic_planner.filters.circuit import Circuit
-from harmonic_planner.filters.topologies import ladder_series, ladder_shunt
+from harmonic_planner.filters.topologies import (
+    capacitive,
+    high_pass,
+    inductive,
+    ladder_series,
+    ladder_shunt,
+    low_pass,
+    series_capacitive,
+)
 from harmonic_planner.filters.topologies.base import Topology, TopologyError, UnequalTerminationError
 from harmonic_planner.physics.prototypes import Prototype
 
@@ -19,6 +27,11 @@ REGISTRY: Mapping[str, Topology] = MappingProxyType(
         for module in (
             ladder_series,
             ladder_shunt,
+            capacitive,
+            inductive,
+            series_capacitive,
+            low_pass,
+            high_pass,
         )
     }
 )
@@ -66,7 +79,15 @@ def expand(names: Iterable[str]) -> tuple[str, ...]:
     return tuple(resolved)
 
 
-def design(name: str, prototype: Prototype, *, centre_hz: float, bandwidth: float, impedance_ohm: float) -> Circuit:
+def design(
+    name: str,
+    prototype: Prototype,
+    *,
+    centre_hz: float,
+    bandwidth: float,
+    impedance_ohm: float,
+    resonator: float | None = None,
+) -> Circuit:
     """Design one topology's ideal circuit from a prototype.
 
     Parameters
@@ -81,6 +102,8 @@ def design(name: str, prototype: Prototype, *, centre_hz: float, bandwidth: floa
         Bandwidth as a fraction of the centre.
     impedance_ohm : float
         Source and load [ohm].
+    resonator : float, optional
+        Free inductance [H] or capacitance [F], where the topology has one.
 
     Returns
     -------
@@ -94,4 +117,6 @@ def design(name: str, prototype: Prototype, *, centre_hz: float, bandwidth: floa
     """
     if name not in REGISTRY:
         raise TopologyError(f"topology = {name!r} is not one circuit; allowed: {', '.join(REGISTRY)}")
-    return REGISTRY[name].design(prototype, centre_hz=centre_hz, bandwidth=bandwidth, impedance_ohm=impedance_ohm)
+    return REGISTRY[name].design(
+        prototype, centre_hz=centre_hz, bandwidth=bandwidth, impedance_ohm=impedance_ohm, resonator=resonator
+    )

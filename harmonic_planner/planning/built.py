@@ -1,0 +1,245 @@
+"""One filter, first as a sketch with ideal values and then as built: parts that exist, strays absorbed."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from harmonic_planner.filters import flags
+from harmonic_planner.filters.absorb import absorb
+from harmonic_planner.filters.built_response import sweep_built
+from harmonic_planner.filters.circuit import Circuit
+from harmonic_planner.filters.response import Response, sweep
+from harmonic_planner.filters.snap import snap
+from harmonic_planner.filters.topologies import REGISTRY, TopologyError
+from harmonic_planner.model import VERDICT_RANK, ElementReport, ElementVerdict
+from harmonic_planner.parts.kits import Kit
+from harmonic_planner.physics.prototypes import Prototype
+from harmonic_planner.planning.jobs import Action, Array, Attenuation, Job, act
+
+_MIDBAND_POINTS = 21
+_MIDBAND_SHARE = 0.5
+_WIDEST_MIDBAND = 0.5
+
+
+@dataclass(frozen=True)
+class Form:
+    """What a filter is made of, apart from its response: topology, parts, impedance, free resonator value.
+
+    `resonator` is in henry or farad, as the topology's free element; None where nothing is free.
+    """
+
+    topology: str
+    kit: Kit
+    impedance_ohm: float
+    resonator: float | None = None
+
+
+@dataclass(frozen=True)
+class Built:
+    """A filter in a form, with what it does and what its parts are.
+
+    Attributes
+    ----------
+    bandwidth : float
+        Fraction of the centre.
+    ideal : Circuit
+        Values by design, no strays.
+    circuit : Circuit
+        Values as bought; the same as `ideal` in a sketch.
+    parts : tuple of tuple of float
+        What is bought for each element, two where parts stand in parallel; empty in a sketch.
+    midband_db : float
+        Least loss around the centre.
+    short_db : float
+        Least of rejection less requirement over the lines that need any.
+    problem : str
+        What strays make impossible, in words.
+    """
+
+    prototype: Prototype
+    form: Form
+    centre_hz: float
+    bandwidth: float
+    ideal: Circuit
+    circuit: Circuit
+    parts: tuple[tuple[float, ...], ...]
+    action: Action
+    midband_db: float
+    elements: tuple[ElementReport, ...]
+    short_db: float
+    problem: str = ""
+
+    @property
+    def one_sided(self) -> bool:
+        """Whether it is a low-pass or a high-pass; its centre is then the cut-off."""
+        return REGISTRY[self.form.topology].passes != "band"
+
+    @property
+    def resonators(self) -> int:
+        """Order of a bandpass; a low-pass or high-pass has half as many parts, two to a resonator."""
+        return (self.prototype.order + 1) // 2 if self.one_sided else self.prototype.order
+
+    @property
+    def topology(self) -> str:
+        """Name of the topology."""
+        return self.form.topology
+
+    @property
+    def verdict(self) -> ElementVerdict:
+        """The worst verdict among the parts."""
+        return max((e.verdict for e in self.elements), key=VERDICT_RANK.__getitem__, default="ok")
+
+    @property
+    def strain(self) -> tuple[int, int]:
+        """How many parts are swamped, and how many marginal: less is better."""
+        verdicts = [e.verdict for e in self.elements]
+        return verdicts.count("swamped"), verdicts.count("marginal")
+
+    @property
+    def part_count(self) -> int:
+        """How many parts are soldered."""
+        return sum(len(p) for p in self.parts) or len(self.circuit.elements)
+
+
+def sketch(
+    job: Job, prototype: Prototype, form: Form, *, centre_hz: float, bandwidth: float, required_db: Array
+) -> Built | None:
+    """Design ideal values and see what they would do with the kit's losses; None where it cannot be designed so.
+
+    Strays are taken as absorbed: each element is judged by what its strays' own tolerance leaves.
+    """
+    ideal = design_ideal(prototype, form, centre_hz=centre_hz, bandwidth=bandwidth)
+    if ideal is None:
+        return None
+    return _measured(
+        job, prototype, form, centre_hz, bandwidth, ideal, ideal, (), required_db, _lossy(job, ideal, form)
+    )
+
+
+def design_ideal(prototype: Prototype, form: Form, *, centre_hz: float, bandwidth: float) -> Circuit | None:
+    """Return the ideal circuit of a form, None where it cannot be designed so."""
+    try:
+        return REGISTRY[form.topology].design(
+            prototype,
+            centre_hz=centre_hz,
+            bandwidth=bandwidth,
+            impedance_ohm=form.impedance_ohm,
+            resonator=form.resonator,
+        )
+    except TopologyError:
+        return None
+
+
+def realise(job: Job, drawn: Built, required_db: Array) -> Built:
+    """Absorb the strays, put the values on the kit's grid, re-trim, and see what exactly those parts do."""
+    passband = passband_hz(drawn)
+    absorbed = absorb(drawn.ideal, drawn.form.kit, passband_hz=passband)
+    snapped = snap(absorbed.circuit, drawn.form.kit, ideal=drawn.ideal, passband_hz=passband)
+    built = _measured(
+        job,
+        drawn.prototype,
+        drawn.form,
+        drawn.centre_hz,
+        drawn.bandwidth,
+        drawn.ideal,
+        snapped.circuit,
+        snapped.parts,
+        required_db,
+        as_built(job, snapped.circuit, drawn.form),
+    )
+    return replace(built, problem=absorbed.problem or snapped.problem)
+
+
+def passband_hz(built: Built) -> tuple[float, float]:
+    """Return the band edges [Hz], geometrically about the centre; of a one-sided filter its cut-off and a third of it."""
+    passes = REGISTRY[built.form.topology].passes
+    if passes == "low":
+        return built.centre_hz / 3, built.centre_hz
+    if passes == "high":
+        return built.centre_hz, 3 * built.centre_hz
+    half = built.bandwidth / 2
+    ratio = half + np.sqrt(1 + half**2)
+    return built.centre_hz / ratio, built.centre_hz * ratio
+
+
+def response(job: Job, circuit: Circuit, form: Form, frequency_hz: Array) -> Response:
+    """Return the response of a circuit as bought, strays and losses included."""
+    if job.design.unloaded_q is not None:
+        return sweep(circuit, frequency_hz, unloaded_q=job.design.unloaded_q)
+    return sweep_built(circuit, frequency_hz, kit=form.kit)
+
+
+def as_built(job: Job, circuit: Circuit, form: Form) -> Attenuation:
+    """Return the attenuation of a circuit as bought."""
+
+    def attenuation(frequency_hz: Array) -> Array:
+        return response(job, circuit, form, frequency_hz).attenuation_db
+
+    return attenuation
+
+
+def lossless(circuit: Circuit) -> Attenuation:
+    """Return the attenuation of a circuit's elements without loss or stray."""
+
+    def attenuation(frequency_hz: Array) -> Array:
+        return sweep(circuit, frequency_hz).attenuation_db
+
+    return attenuation
+
+
+def _lossy(job: Job, circuit: Circuit, form: Form) -> Attenuation:
+    """Return the attenuation of ideal values with losses only."""
+
+    def attenuation(frequency_hz: Array) -> Array:
+        q = job.design.unloaded_q
+        return sweep(circuit, frequency_hz, kit=form.kit if q is None else None, unloaded_q=q).attenuation_db
+
+    return attenuation
+
+
+def _measured(
+    job: Job,
+    prototype: Prototype,
+    form: Form,
+    centre_hz: float,
+    bandwidth: float,
+    ideal: Circuit,
+    circuit: Circuit,
+    parts: Sequence[tuple[float, ...]],
+    required_db: Array,
+    attenuation: Attenuation,
+) -> Built:
+    """Measure a circuit: every line, the midband loss, every part."""
+    action = act(job, attenuation)
+    needing = required_db > 0
+    middle_hz = centre_hz if REGISTRY[form.topology].passes == "band" else job.centre_hz
+    around = np.linspace(-_MIDBAND_SHARE / 2, _MIDBAND_SHARE / 2, _MIDBAND_POINTS) * min(bandwidth, _WIDEST_MIDBAND)
+    midband_db = float(attenuation(middle_hz * (1 + around)).min())
+    return Built(
+        prototype=prototype,
+        form=form,
+        centre_hz=centre_hz,
+        bandwidth=bandwidth,
+        ideal=ideal,
+        circuit=circuit,
+        parts=tuple(parts),
+        action=action,
+        midband_db=midband_db,
+        elements=flags.judge(
+            ideal,
+            form.kit,
+            centre_hz=middle_hz,
+            highest_line_hz=float(np.max(job.low_hz[needing], initial=centre_hz)),
+            nominal=circuit,
+        ),
+        short_db=float(np.min((action.rejection_db - required_db)[needing], initial=np.inf)),
+    )
+
+
+def meets(job: Job, built: Built) -> bool:
+    """Tell whether the circuit gives every rejection within the loss and flatness limits."""
+    flat = built.action.carrier_most_db - built.midband_db <= job.design.flatness_db + 1e-9
+    return built.short_db >= 0 and built.midband_db <= job.design.loss_db and flat
