@@ -67,7 +67,7 @@ def apply_proposal(text: str, stage_index: int, proposal: Proposal) -> str:
 
 
 def moved(text: str, *, from_folder: Path, to_folder: Path) -> str:
-    """Return a scenario's text for another folder: kit files that it names relative to its own are still found.
+    """Return a scenario's text for another folder: files that it names relative to its own are still found.
 
     Parameters
     ----------
@@ -99,6 +99,10 @@ def moved(text: str, *, from_folder: Path, to_folder: Path) -> str:
             new: Value = [renamed(name) for name in kit] if isinstance(kit, list) else renamed(kit)
             if new != kit:
                 table["kit"] = new
+        given = table.get("filter")
+        for key in ("touchstone", "table"):
+            if isinstance(given, dict) and key in given and (file := renamed(given[key])) != given[key]:
+                given[key] = file
     return _like(text, tomlkit.dumps(document))
 
 

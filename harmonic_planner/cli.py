@@ -12,13 +12,11 @@ import io
 import os
 import signal
 import sys
-import threading
 import traceback
-from collections.abc import Callable, Iterator, Sequence
-from contextlib import contextmanager, suppress
+from collections.abc import Callable, Sequence
+from contextlib import suppress
 from pathlib import Path
-from types import FrameType
-from typing import TYPE_CHECKING, Annotated
+from typing import TYPE_CHECKING, Annotated, Any
 
 import typer
 
@@ -27,6 +25,7 @@ from harmonic_planner.export import folder, new_file
 from harmonic_planner.export.folder import OutputWriteError
 from harmonic_planner.export.proposals import numbered_proposals
 from harmonic_planner.model import PlannerError, Scenario
+from harmonic_planner.stopping import StoppedError, stopping_on_signals
 
 if TYPE_CHECKING:
     from harmonic_planner.planning.plan import WorkedOut
@@ -35,12 +34,15 @@ PROGRAM = "harmonic-planner"
 SHIPPED = "glacier-sounder.toml"
 DEBUG = "HARMONIC_PLANNER_DEBUG"
 
-_SIGNALS = (signal.SIGINT, signal.SIGTERM)
-
 
 def _example(*commands: str) -> str:
     """Lay out example commands for the end of a help page, which keeps their lines apart."""
     return "\b\nExample:\n" + "\n".join(f"  {PROGRAM} {command}" for command in commands)
+
+
+def _choice(metavar: str, meaning: str) -> Any:
+    """Declare an option of `window` that may be left out."""
+    return typer.Option(metavar=metavar, show_default=False, help=meaning)
 
 
 app = typer.Typer(
@@ -49,14 +51,6 @@ app = typer.Typer(
     pretty_exceptions_enable=False,
     context_settings={"help_option_names": ["-h", "--help"]},
 )
-
-
-class StoppedError(BaseException):
-    """A signal asked the program to stop; not an Exception, so that nothing takes it for a fault."""
-
-    def __init__(self, number: int) -> None:
-        super().__init__(number)
-        self.number = number
 
 
 def _show_version(wanted: bool) -> None:
@@ -108,11 +102,12 @@ def plan(
     result = worked.plan
 
     from harmonic_planner.report import terminal
+    from harmonic_planner.report.console import console
     from harmonic_planner.report.files import plan_files
 
     files = plan_files(worked)
     folder.write(target, files)
-    screen = terminal.console()
+    screen = console()
     terminal.show_plan(result, screen)
     screen.print(f"\nPlanned {path}; wrote {len(files)} files to {target}{os.sep}", soft_wrap=True)
     return result.exit_status
@@ -126,9 +121,63 @@ def lines(
     result = _planned(scenario).plan
 
     from harmonic_planner.report import terminal
+    from harmonic_planner.report.console import console
 
-    terminal.show_lines(result, terminal.console())
+    terminal.show_lines(result, console())
     return 0
+
+
+@app.command(
+    epilog=_example(
+        'window --carrier "240 MHz" --line "120 MHz, 45 dB" \\\n      --line "359 MHz..361 MHz, 40 dB" --kit chip-0805'
+    )
+)
+def window(
+    carrier: Annotated[str, _choice("FREQUENCY", 'Carrier, "240 MHz", or its span, "239 MHz..241 MHz".')],
+    line: Annotated[
+        list[str],
+        _choice("'FREQUENCY, REJECTION'", 'Unwanted line and the rejection it needs, "120 MHz, 45 dB"; one or more.'),
+    ],
+    kit: Annotated[
+        list[str] | None, _choice("NAME", "Parts: a shipped kit or a kit file. Default: chip-0603. May be repeated.")
+    ] = None,
+    topology: Annotated[list[str] | None, _choice("NAME", "Circuit. Default: any. May be repeated.")] = None,
+    family: Annotated[list[str] | None, _choice("NAME", "butterworth or chebyshev. Default: both.")] = None,
+    order: Annotated[int | None, _choice("N", "Resonators. Default: the fewest that do.")] = None,
+    flatness: Annotated[
+        str | None, _choice("RATIO", 'Loss at the worst of span and drift over midband. Default: "1 dB".')
+    ] = None,
+    loss: Annotated[str | None, _choice("RATIO", 'Midband loss, at most. Default: "6 dB".')] = None,
+    drift: Annotated[str | None, _choice("PERCENT", 'Movement of the centre. Default: "1 %".')] = None,
+    min_bandwidth: Annotated[
+        str | None, _choice("PERCENT", "Narrowest bandwidth. Default: what the tolerance of the parts allows.")
+    ] = None,
+    impedance: Annotated[str | None, _choice("RESISTANCE", 'Of both ports. Default: "50 ohm".')] = None,
+    isolation: Annotated[
+        str | None, _choice("RATIO", "What the layout isolates, past which nothing rejects. Default: not counted.")
+    ] = None,
+    resonator: Annotated[
+        str | None, _choice("VALUE", 'Inductance or capacitance of coupled resonators, "8 nH". Default: what fits.')
+    ] = None,
+) -> int:
+    """Choose one filter at the bench: windows, circuit and parts, without a file.
+
+    Exit status 0: the filter as built does it and every part can be bought and placed. 3: it does not.
+    """
+    from harmonic_planner.bench_options import read
+
+    keys = {"topology": topology, "families": family, "order": order, "flatness": flatness, "loss": loss}
+    keys |= {"drift": drift, "min_bandwidth": min_bandwidth, "impedance": impedance, "isolation": isolation}
+    here = Path()
+    task = read(carrier, line, keys | {"kit": kit, "resonator": resonator}, here)
+
+    from harmonic_planner.planning.bench import answer
+    from harmonic_planner.report.console import console
+    from harmonic_planner.report.window import does_it, show_window
+
+    found = answer(task.carrier_hz, task.lines, task.design, here)
+    show_window(found, task.lines, console())
+    return 0 if does_it(found) else 3
 
 
 @app.command(epilog=_example("schema > scenario.schema.json"))
@@ -262,7 +311,7 @@ def main(arguments: Sequence[str] | None = None) -> int:
         if isinstance(stream, io.TextIOWrapper):
             stream.reconfigure(errors="replace")  # a terminal that cannot show × shows ?
     try:
-        with _stopping_on_signals():
+        with stopping_on_signals():
             command = typer.main.get_command(app)
             args = None if arguments is None else list(arguments)
             status = command.main(args=args, prog_name=PROGRAM, standalone_mode=False)
@@ -302,23 +351,3 @@ def _fail(status: int, message: str) -> int:
             shown = "".join(character if character.isprintable() else "?" for character in line)
             typer.echo(f"error: {shown}", err=True)
     return status
-
-
-@contextmanager
-def _stopping_on_signals() -> Iterator[None]:
-    """Turn the first SIGINT or SIGTERM into StoppedError, so that what is half done is undone; ignore further ones."""
-    if threading.current_thread() is not threading.main_thread():
-        yield
-        return
-
-    def stop(number: int, _frame: FrameType | None) -> None:
-        for each in _SIGNALS:
-            signal.signal(each, signal.SIG_IGN)
-        raise StoppedError(number)
-
-    before = {each: signal.signal(each, stop) for each in _SIGNALS}
-    try:
-        yield
-    finally:
-        for each, handler in before.items():
-            signal.signal(each, handler)

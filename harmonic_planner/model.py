@@ -21,7 +21,8 @@ Phases = Literal["worst-case", "average"]
 Placement = Literal["series", "shunt"]
 Kind = Literal["L", "C"]
 ElementVerdict = Literal["ok", "marginal", "swamped"]
-FilterSource = Literal["planned", "given", "none"]
+FilterSource = Literal["planned", "given", "touchstone", "table", "none"]
+BeyondSweep = Literal["refuse", "no-rejection"]
 
 VERDICT_RANK: Mapping[ElementVerdict, int] = {"ok": 0, "marginal": 1, "swamped": 2}
 
@@ -73,6 +74,25 @@ class GivenFilter:
     ripple_db: float = 0.1
     topology: str | None = None
     unloaded_q: float | None = None
+
+
+@dataclass(frozen=True)
+class MeasuredFilter:
+    """A filter known by what it does at some frequencies: a measurement, a data sheet."""
+
+    source: Literal["touchstone", "table"]
+    file: str
+    """As the scenario names it."""
+    frequency_hz: tuple[float, ...]
+    """At least two, ascending [Hz]."""
+    attenuation_db: tuple[float, ...]
+    """At each frequency, between the stage's impedances [dB]."""
+    return_loss_db: tuple[float, ...] = ()
+    """At each frequency, at the port towards the multiplier [dB]; empty for a table."""
+    impedance_ohm: tuple[float, float] | None = None
+    """Of the file's two ports, before it was recalculated to the stage's; None for a table."""
+    beyond_sweep: BeyondSweep = "refuse"
+    """What to do with a line outside the frequencies: refuse it, or take it to pass as the carrier does."""
 
 
 @dataclass(frozen=True)
@@ -130,7 +150,7 @@ class Stage:
     """None exactly for times = 1, a plain clean-up stage."""
     pad_db: float = 0.0
     pad_after_db: float = 0.0
-    filter: Literal["plan", "none"] | GivenFilter = "plan"
+    filter: Literal["plan", "none"] | GivenFilter | MeasuredFilter = "plan"
     amplifier: Amplifier | None = None
     limit_dbc: float | None = None
     design: Design = Design()
@@ -262,6 +282,8 @@ class Window:
     feasible: bool
     reason: str = ""
     """Why there is no window, in words."""
+    centre_min_hz: float | None = None
+    """Middle of the centres allowed at the narrowest bandwidth."""
 
 
 @dataclass(frozen=True)

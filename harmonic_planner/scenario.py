@@ -5,10 +5,12 @@ from __future__ import annotations
 import math
 import tomllib
 from pathlib import Path
-from typing import Any
+from typing import Any, Literal
 
 from pydantic import ValidationError
 
+from harmonic_planner.column_files import ColumnFileError
+from harmonic_planner.measured_files import read_filter
 from harmonic_planner.model import (
     Amplifier,
     Design,
@@ -16,6 +18,7 @@ from harmonic_planner.model import (
     GivenFilter,
     Isolation,
     MaskBand,
+    MeasuredFilter,
     Output,
     PlannerError,
     Scenario,
@@ -31,7 +34,9 @@ from harmonic_planner.scenario_tables import (
     DeviceTable,
     Document,
     FilterTable,
+    RejectionTable,
     StageTable,
+    TouchstoneTable,
 )
 from harmonic_planner.template import TEMPLATE
 
@@ -207,7 +212,7 @@ def _scenario(document: Document, path: Path) -> Scenario:
             mask=tuple(MaskBand(band.from_, band.to, band.limit) for band in output.mask or ()),
         ),
         design=_design(document.design),
-        stages=tuple(_stage(i, stage, document.design) for i, stage in enumerate(document.stage)),
+        stages=tuple(_stage(i, stage, document.design, path) for i, stage in enumerate(document.stage)),
         defaults=tuple(listed_defaults(document)),
         folder=path.parent,
     )
@@ -244,7 +249,7 @@ def _design(table: DesignTable, stage: StageTable | None = None) -> Design:
     )
 
 
-def _stage(i: int, table: StageTable, design: DesignTable) -> Stage:
+def _stage(i: int, table: StageTable, design: DesignTable, path: Path) -> Stage:
     merged = _design(design, table)
     return Stage(
         name=stage_name(i, table),
@@ -252,7 +257,7 @@ def _stage(i: int, table: StageTable, design: DesignTable) -> Stage:
         device=_device(table.device, table.times) if table.device is not None else None,
         pad_db=table.pad or 0.0,
         pad_after_db=table.pad_after or 0.0,
-        filter=_given(table.filter, merged) if isinstance(table.filter, FilterTable) else table.filter,  # type: ignore[arg-type]
+        filter=_filter(table, merged, path),
         amplifier=_amplifier(table.amplifier) if table.amplifier is not None else None,
         limit_dbc=table.limit,
         design=merged,
@@ -282,6 +287,18 @@ def _amplifier(table: AmplifierTable) -> Amplifier:
         lines_dbc=dict(table.lines or {}),
         reflection=table.reflection,
     )
+
+
+def _filter(table: StageTable, design: Design, path: Path) -> Literal["plan", "none"] | GivenFilter | MeasuredFilter:
+    """Convert what stands for a stage's filter; a file has been read once before, for what is wrong with it."""
+    if isinstance(table.filter, FilterTable):
+        return _given(table.filter, design)
+    if isinstance(table.filter, TouchstoneTable | RejectionTable):
+        try:
+            return read_filter(table.filter, folder=path.parent, impedance_ohm=design.impedance_ohm)
+        except ColumnFileError as error:  # the file has changed since
+            raise ScenarioError(path, (f"a filter's file cannot be used: {error}",)) from None
+    return "none" if table.filter == "none" else "plan"
 
 
 def _given(table: FilterTable, design: Design) -> GivenFilter:

@@ -10,7 +10,9 @@ from typing import Any, TypeVar
 
 from pydantic import ValidationError
 
+from harmonic_planner.column_files import ColumnFileError
 from harmonic_planner.filters import topologies
+from harmonic_planner.measured_files import read_filter
 from harmonic_planner.model import DeviceType
 from harmonic_planner.parts.kit_files import KitError
 from harmonic_planner.parts.kits import kit_names, load_kit
@@ -23,9 +25,11 @@ from harmonic_planner.scenario_tables import (
     DesignTable,
     FilterTable,
     OutputTable,
+    RejectionTable,
     SourceTable,
     StageTable,
     Table,
+    TouchstoneTable,
 )
 
 MOST_STAGES = 12
@@ -92,7 +96,7 @@ def joint_problems(raw: Mapping[str, Any], parts: Parts, *, folder: Path) -> Ite
     parts : Parts
         Its tables, as far as they could be read.
     folder : pathlib.Path
-        Where a kit file is looked up.
+        Where kit files and filters' files are looked up.
 
     Yields
     ------
@@ -104,6 +108,7 @@ def joint_problems(raw: Mapping[str, Any], parts: Parts, *, folder: Path) -> Ite
         if stage is not None:
             yield from _device_problems(i, stage)
             yield from _filter_problems(i, stage)
+            yield from _file_problems(i, stage, folder)
             if parts.design is not None and stage.filter == "plan":
                 yield from _flatness_problems(i, stage, parts.design)
                 yield from _fixed_problems(i, stage, parts.design)
@@ -163,6 +168,21 @@ def _filter_problems(i: int, stage: StageTable) -> Iterator[Problem]:
         yield Problem(("stage", i, "filter", "bandwidth"), "must be at most the centre frequency")
     if given.family == "butterworth" and given.ripple is not None:
         yield Problem(("stage", i, "filter", "ripple"), "must be left out for butterworth: it has no ripple")
+
+
+def _file_problems(i: int, stage: StageTable, folder: Path) -> Iterator[Problem]:
+    """Read the file of a measured filter for what is wrong with it; between which impedances is no matter here."""
+    if not isinstance(stage.filter, TouchstoneTable | RejectionTable):
+        return
+    key, noun = (
+        ("touchstone", "the path of a Touchstone file of two ports")
+        if isinstance(stage.filter, TouchstoneTable)
+        else ("table", "the path of a CSV file with frequency and rejection")
+    )
+    try:
+        read_filter(stage.filter, folder=folder, impedance_ohm=50.0)
+    except ColumnFileError as error:
+        yield Problem(("stage", i, "filter", key), f"must be {noun}; {error}")
 
 
 def _flatness_problems(i: int, stage: StageTable, design: DesignTable) -> Iterator[Problem]:

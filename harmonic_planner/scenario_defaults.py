@@ -11,8 +11,10 @@ from harmonic_planner.scenario_tables import (
     DeviceTable,
     Document,
     FilterTable,
+    RejectionTable,
     SourceTable,
     StageTable,
+    TouchstoneTable,
 )
 
 HALF_ANGLES_DEG: Mapping[int, float] = {2: 70.0, 3: 50.0}
@@ -79,6 +81,8 @@ def _stage_defaults(place: str, stage: StageTable, design: DesignTable) -> Itera
             yield f"{place}.{name}: none"
     if "filter" not in stage.model_fields_set:
         yield f"{place}.filter = plan"
+    if isinstance(stage.filter, TouchstoneTable | RejectionTable) and "beyond_sweep" not in stage.filter.model_fields_set:
+        yield f"{place}.filter.beyond_sweep = {stage.filter.beyond_sweep}"
     if isinstance(stage.filter, FilterTable):
         given = stage.filter
         if given.ripple is None and given.family == "chebyshev":

@@ -27,9 +27,11 @@ from harmonic_planner.scenario_tables import (
     FilterTable,
     MaskTable,
     OutputTable,
+    RejectionTable,
     SourceTable,
     StageTable,
     Table,
+    TouchstoneTable,
 )
 
 Location = tuple[str | int, ...]
@@ -45,6 +47,8 @@ _BELONGS: Mapping[type[Table], str] = {
     DeviceTable: "in a stage's device",
     AmplifierTable: "in a stage's amplifier",
     FilterTable: "in a stage's filter",
+    TouchstoneTable: "in a stage's measured filter",
+    RejectionTable: "in a stage's filter known by a table",
 }
 _TABLES: Mapping[str, type[Table]] = {
     "source": SourceTable,
@@ -56,6 +60,8 @@ _TABLES: Mapping[str, type[Table]] = {
     "amplifier": AmplifierTable,
     "filter": FilterTable,
 }
+_FILTERS: Mapping[str, type[Table]] = {"touchstone": TouchstoneTable, "table": RejectionTable}
+"""Tables that stand in place of a given filter's, by the branch that pydantic took."""
 _LINES: Mapping[str, Rule] = {"source": SOURCE_LINE, "device": DEVICE_LINE, "amplifier": AMPLIFIER_LINE}
 SHAPES: Mapping[str, str] = {
     "source": 'a table: [source] with frequency = "100 MHz"',
@@ -178,9 +184,10 @@ def key_problems(error: ValidationError) -> Iterator[Problem]:
     """
     for found in error.errors(include_url=False):
         kind, place = found["type"], found["loc"]
-        if place[0] == "stage" and place[2:3] == ("filter",):
-            place = place[:3] + place[4:]  # pydantic also names the branch taken, table or word
         holder = _holder(place)
+        if place[0] == "stage" and place[2:3] == ("filter",):  # pydantic also names the branch taken
+            branch, place = place[3:4], place[:3] + place[4:]
+            holder = _FILTERS.get(str(*branch), _holder(place))
         if kind == "extra_forbidden":
             yield Problem(place, _unknown(str(place[-1]), holder), shown=False)
         elif kind == "missing":

@@ -14,7 +14,7 @@ from typing import Annotated, Any, get_args
 from pydantic import BaseModel, ConfigDict, Discriminator, Field, Tag
 
 from harmonic_planner.filters import topologies
-from harmonic_planner.model import DeviceClass, DeviceType, Family, Phases
+from harmonic_planner.model import BeyondSweep, DeviceClass, DeviceType, Family, Phases
 from harmonic_planner.quantities import (
     ANGLE,
     FREQUENCY,
@@ -122,7 +122,7 @@ class FilterWord(Choice):
     @property
     def allowed(self) -> str:
         """Words that follow "must be"."""
-        return '"plan", "none" or a table { family, order, centre, bandwidth }'
+        return '"plan", "none" or a table { family, order, centre, bandwidth }, { touchstone } or { table }'
 
 
 GAIN = Kind("a gain", "dB", "-9 dB", -80.0, 40.0)
@@ -131,6 +131,7 @@ REFLECTION = Number(0, 1, below=True)
 QUALITY = Number(1, 1e6)
 ORDER = Number(1, 9, whole=True)
 SHARE = PERCENT.between(0, 100, above=True)
+FILE = Text("the path of a file", 300)
 LIMIT = LINE_DBC.between(-250, 0, below=True, example="-60 dBc")
 SOURCE_LINE = LineKey(fractions=True, first=1)
 DEVICE_LINE = LineKey(fractions=False, first=1)
@@ -310,8 +311,31 @@ class FilterTable(Table):
     unloaded_q: Annotated[float | None, QUALITY] = _maybe("Unloaded Q of a resonator; default: lossless")
 
 
+_BEYOND = 'A line outside the frequencies there: "refuse", or "no-rejection", which lets it pass as the carrier does'
+
+
+class TouchstoneTable(Table):
+    """A filter measured as a two-port, port 1 towards the multiplier."""
+
+    touchstone: Annotated[str, FILE] = _need("Touchstone file (.s2p, or .ts), relative to the scenario's folder")
+    beyond_sweep: Annotated[BeyondSweep, Choice(get_args(BeyondSweep))] = _default("refuse", _BEYOND)
+
+
+class RejectionTable(Table):
+    """A filter known by its rejection at some frequencies."""
+
+    table: Annotated[str, FILE] = _need(
+        "CSV file with the columns frequency (with unit) or frequency_hz, _khz, _mhz, _ghz, and rejection (with unit) or "
+        "rejection_db, relative to the scenario's folder"
+    )
+    beyond_sweep: Annotated[BeyondSweep, Choice(get_args(BeyondSweep))] = _default("refuse", _BEYOND)
+
+
 def _filter_tag(value: object) -> str:
-    return "table" if isinstance(value, dict | FilterTable) else "word"
+    """Tell the ways to write a filter apart by the key that only one of them has."""
+    if isinstance(value, dict):
+        return next((tag for tag in ("touchstone", "table") if tag in value), "described")
+    return {FilterTable: "described", TouchstoneTable: "touchstone", RejectionTable: "table"}.get(type(value), "word")
 
 
 def _without_defaults(schema: dict[str, Any]) -> None:
@@ -334,8 +358,12 @@ class StageTable(DesignTable):
     pad_after: Annotated[float | None, RATIO_DB] = _maybe("Pad behind the filter; default: none")
     limit: Annotated[float | None, LIMIT] = _maybe("Limit of every unwanted line at this stage's output; default: none")
     filter: Annotated[
-        Annotated[FilterTable, Tag("table")] | Annotated[str, FilterWord(), Tag("word")], Discriminator(_filter_tag)
-    ] = _default("plan", '"plan", "none", or a given filter')
+        Annotated[FilterTable, Tag("described")]
+        | Annotated[TouchstoneTable, Tag("touchstone")]
+        | Annotated[RejectionTable, Tag("table")]
+        | Annotated[str, FilterWord(), Tag("word")],
+        Discriminator(_filter_tag),
+    ] = _default("plan", '"plan", "none", a given filter, or a measured one')
     amplifier: AmplifierTable | None = _maybe("Amplifier behind the filter; default: none")
 
 

@@ -76,7 +76,8 @@ times = 3
 # Pads before and behind the filter: they cost level and save rejection, since a filter reflects what it stops.
 pad = "6 dB"
 pad_after = "6 dB"
-# "plan", "none", or one you have: { family = "chebyshev", order = 3, centre = "75 MHz", bandwidth = "20 %" }.
+# "plan", "none", or one you have: { family = "chebyshev", order = 3, centre = "75 MHz", bandwidth = "20 %" },
+# or as measured: { touchstone = "tripler.s2p" }, { table = "tripler.csv" } with columns frequency and rejection.
 filter = "plan"
 # Limit of every unwanted line at this stage's own output.
 #limit = "-20 dBc"

@@ -20,6 +20,8 @@ ROOM_OF_MODULE = {
     "scenario_defaults": "scenario",
     "scenario_problems": "scenario",
     "scenario_tables": "scenario",
+    "bench_options": "scenario",
+    "stopping": "cli",
     "template": "scenario",
 }
 """Modules at the top of the package that belong to a room of another name."""

@@ -62,7 +62,13 @@ def worst_excess(chain: ChainArrays, rejections_db: Sequence[Array]) -> Array:
     return excess(chain, combs)
 
 
-def requirement(chain: ChainArrays, achieved_db: Sequence[Array], filtered: Sequence[bool]) -> Rejections:
+def requirement(
+    chain: ChainArrays,
+    achieved_db: Sequence[Array],
+    filtered: Sequence[bool],
+    *,
+    movable: Sequence[bool] | None = None,
+) -> Rejections:
     """Return rejections that suffice together and of which none can be lowered alone.
 
     The filters' surplus is first shared by lowering every rejection alike; then far lines, where filters do much
@@ -77,18 +83,24 @@ def requirement(chain: ChainArrays, achieved_db: Sequence[Array], filtered: Sequ
         Rejection of each stage's filter, leakage included; ignored below 3 dB.
     filtered : sequence of bool
         Whether the stage has a filter.
+    movable : sequence of bool, optional
+        Stages whose rejections may be changed, all by default; the others keep what they achieve.
 
     Returns
     -------
     Rejections
     """
+    moves = [True] * len(chain.stages) if movable is None else list(movable)
     usable = [
         np.where(a < LEAST_USEFUL_DB, 0.0, a) if has else np.zeros_like(a)
         for a, has in zip(achieved_db, filtered, strict=True)
     ]
 
     def lowered(by_db: float) -> list[Array]:
-        return [np.where(u > 0, np.maximum(u - by_db, 0.0), 0.0) for u in usable]
+        return [
+            np.where(u > 0, np.maximum(u - by_db, 0.0), 0.0) if moving else u
+            for u, moving in zip(usable, moves, strict=True)
+        ]
 
     out_of_reach = worst_excess(chain, lowered(-_REACH_DB)) > 1.0
     chain = without_limits(chain, out_of_reach)
@@ -98,10 +110,10 @@ def requirement(chain: ChainArrays, achieved_db: Sequence[Array], filtered: Sequ
     )
     alike = lowered(surplus)
     share_db = _last_that_meets(
-        lambda s: bool((worst_excess(chain, _capped(chain, alike, s)) <= 1.0).all()), low=-_REACH_DB, high=0.0
+        lambda s: bool((worst_excess(chain, _capped(chain, alike, s, moves)) <= 1.0).all()), low=-_REACH_DB, high=0.0
     )
-    shared = _capped(chain, alike, share_db)
-    return Rejections(tuple(_relaxed(chain, shared)), out_of_reach, surplus)
+    shared = _capped(chain, alike, share_db, moves)
+    return Rejections(tuple(_relaxed(chain, shared, moves)), out_of_reach, surplus)
 
 
 def _last_that_meets(meets: Callable[[float], bool], *, low: float, high: float) -> float:
@@ -117,7 +129,7 @@ def _last_that_meets(meets: Callable[[float], bool], *, low: float, high: float)
     return low
 
 
-def _capped(chain: ChainArrays, rejections_db: Sequence[Array], share_db: float) -> list[Array]:
+def _capped(chain: ChainArrays, rejections_db: Sequence[Array], share_db: float, moves: Sequence[bool]) -> list[Array]:
     """Lower every rejection until its line takes `share_db` of a limit; none is raised."""
     combs = propagate(chain, [chain.from_db(-r) for r in rejections_db], allowed=True)
     share = float(chain.from_db(share_db))
@@ -130,13 +142,13 @@ def _capped(chain: ChainArrays, rejections_db: Sequence[Array], share_db: float)
             stage = chain.stages[i]
             into = gains * (stage.mismatch * combs[i].device)
             here_db = chain.to_db((into / (share * last.limit[:, None])).max(axis=0))
-            needed_db[i] = np.maximum(needed_db[i], here_db)
+            needed_db[i] = np.maximum(needed_db[i], here_db) if moves[i] else rejections_db[i]
             transmission = chain.from_db(-np.minimum(rejections_db[i], needed_db[i]))
             gains = (gains * (stage.mismatch * stage.termination * transmission)) @ stage.conversion
     return [np.minimum(r, n) for r, n in zip(rejections_db, needed_db, strict=True)]
 
 
-def _relaxed(chain: ChainArrays, rejections_db: Sequence[Array]) -> list[Array]:
+def _relaxed(chain: ChainArrays, rejections_db: Sequence[Array], moves: Sequence[bool]) -> list[Array]:
     """Lower each rejection alone as far as every limit allows; the last stage and the nearest lines come first.
 
     The level at an output is affine in one transmission, so each step is closed form, and since slack only shrinks
@@ -149,7 +161,7 @@ def _relaxed(chain: ChainArrays, rejections_db: Sequence[Array]) -> list[Array]:
         transmissions = [chain.from_db(-r) for r in relaxed]
         combs = propagate(chain, transmissions, allowed=True)
         bound = [to for to in outputs if to >= i]
-        if not bound or not (relaxed[i] > 0).any():
+        if not moves[i] or not bound or not (relaxed[i] > 0).any():
             continue
         slack = np.concatenate([chain.stages[to].limit - combs[to].leaving for to in bound])
         into = np.concatenate([path_gains(chain, transmissions, after=i, to=to, allowed=True) for to in bound]) * (

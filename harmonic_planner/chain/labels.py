@@ -105,7 +105,7 @@ class Search:
         stage = self.stages[i]
         passed = stage.choices[n].passed
         self.effort.spend(len(made) * len(passed))
-        v = (made[:, None, :] * passed + stage.added).reshape(-1, stage.made.size)
+        v = (made[:, None, :] * passed + stage.added).reshape(len(made) * len(passed), stage.made.size)
         here = stage.excess(v)
         power = np.repeat(so_far, len(passed)) + power_sum(here)
         grown = np.column_stack([np.repeat(rows, len(passed), axis=0), np.tile(np.arange(len(passed)), len(made))])

@@ -15,7 +15,12 @@ from harmonic_planner.parts.kits import Kit
 
 FOLDER = "filters"
 BEYOND = 2.0
-"""How far the sweep reaches beyond the lowest and the highest line, as a ratio."""
+"""How far the sweep reaches beyond the lowest and the highest line of the requirement, as a ratio."""
+LEAST_POINTS = 401
+WIDEST_STEP = 0.004
+"""Largest ratio, less one, between neighbouring frequencies: what is read between them is then within 0.05 dB."""
+BEYOND_PRESENT = 1.25
+"""The same beyond any line that is there: as far as the largest drift moves a filter."""
 
 
 @dataclass(frozen=True)
@@ -52,6 +57,7 @@ def filter_files(
     carrier_hz: tuple[float, float],
     passband_hz: tuple[float, float],
     lines_hz: Mapping[Fraction, tuple[float, float]],
+    present_hz: tuple[float, float] | None = None,
 ) -> dict[str, str]:
     """Write a filter's files.
 
@@ -71,6 +77,9 @@ def filter_files(
         Edges of the filter's band, which the Touchstone file looks at closely [Hz].
     lines_hz : mapping of Fraction to tuple of float
         Span of every line of the requirement [Hz].
+    present_hz : tuple of float, optional
+        From the lowest to the highest line that reaches the filter [Hz]: the Touchstone file covers them all, drift and
+        more, so that a budget can be made of it.
 
     Returns
     -------
@@ -92,7 +101,12 @@ def filter_files(
     names = filter_names(stem)
     edges = [edge for span in (carrier_hz, *lines_hz.values()) for edge in span]
     sweep_hz = (min(edges) / BEYOND, max(edges) * BEYOND)
-    frequency = frequencies_hz(carrier_hz, lines_hz.values(), passband_hz=passband_hz, sweep_hz=sweep_hz)
+    low, high = sweep_hz if present_hz is None else present_hz
+    whole_hz = (min(sweep_hz[0], low / BEYOND_PRESENT), max(sweep_hz[1], high * BEYOND_PRESENT))
+    points = max(LEAST_POINTS, math.ceil(math.log(whole_hz[1] / whole_hz[0]) / WIDEST_STEP) + 1)
+    frequency = frequencies_hz(
+        carrier_hz, lines_hz.values(), passband_hz=passband_hz, sweep_hz=whole_hz, points=points
+    )
     forward, backward = (sweep_built(c, frequency, kit=kit) for c in (circuit, circuit.reversed()))
     comments = (
         (f"Filter {stem}", title),

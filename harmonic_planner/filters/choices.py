@@ -1,7 +1,8 @@
 """What a kit has near a wanted value: single parts, and two capacitors side by side as one.
 
-Two in parallel are two parts in every respect: each has its own series inductance and resistance, and one pad more
-stands at each of its ends. Only for choosing is each reckoned as the single part that is like it at the centre.
+Two in parallel are two parts in every respect: each has its own series inductance, via and resistance, one pad more
+stands at each live end, and on a node to ground they share a via as any two parts do. That is on the safe side for two
+on one pair of pads. Only for choosing is a pair reckoned as the single part that is like it at the centre.
 """
 
 from __future__ import annotations

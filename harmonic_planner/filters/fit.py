@@ -11,6 +11,8 @@ References
 
 from __future__ import annotations
 
+from collections.abc import Sequence
+
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
@@ -30,6 +32,10 @@ LEAST_SIZE = 0.05
 LONGEST_STRIDE = 0.25
 """Of the path from no strays to all."""
 MOST_STRIDES = 60
+STRIDES = 5
+"""From one set of given values to another."""
+LONGEST_FOLLOW = 0.3
+"""In one of these, in the logarithm."""
 MOST_FITS = 25
 SETTLED = 5e-3
 """A fit ends when a step reduces the mean square by less than this fraction."""
@@ -81,6 +87,41 @@ def grow(misfit: Misfit, *, least_slope_db: float = LEAST_SLOPES_DB[0]) -> Float
         longest = float((np.abs(step) / size).max())
         relative = relative + step * min(1.0, 2 * misfit.half_width / longest if longest > 0 else 1.0)
         grown += stride
+    return relative
+
+
+def carry(misfit: Misfit, start: Floats, moved: Floats, free: Sequence[int]) -> Floats:
+    """Move some values to given ones in strides, the others following so that the response stays as near as it can.
+
+    Parameters
+    ----------
+    misfit : Misfit
+        The circuit and its strays.
+    start : ndarray
+        (element,) values over ideal values, above zero.
+    moved : ndarray
+        (element,) where all but the free ones go; above zero.
+    free : sequence of int
+        Positions of the values that follow.
+
+    Returns
+    -------
+    ndarray
+        (element,) values over ideal values.
+    """
+    ideal, places = misfit.ideal_values, list(free)
+    nudges = np.concatenate([np.zeros((1, ideal.size)), NUDGE * np.eye(ideal.size)[places]])
+    wanted = misfit.distance(start * ideal)[0]
+    relative, following = start, np.ones(len(places))
+    for share in np.arange(1, STRIDES + 1) / STRIDES:
+        relative = start * (moved / start) ** share
+        relative[places] = start[places] * following
+        around = misfit.distance(relative * (1 + nudges) * ideal)
+        slopes = (around[1:] - around[0]).T / NUDGE
+        normal = slopes.T @ slopes + LEAST_SLOPES_DB[0] ** 2 * np.eye(len(places))
+        step = np.linalg.solve(normal, -slopes.T @ (around[0] - wanted))
+        following = following * np.exp(np.clip(step, -LONGEST_FOLLOW, LONGEST_FOLLOW))
+        relative[places] = start[places] * following
     return relative
 
 

@@ -96,12 +96,12 @@ class Misfit:
         low, high = self.ideal_band.low_hz, self.ideal_band.high_hz
         return ONE_SIDED_WIDTH if low is None or high is None else math.log(high / low) / 2
 
-    def distance(self, values: ArrayLike, *, strays: ArrayLike = 1.0) -> Floats:
+    def distance(self, values: ArrayLike, *, second: ArrayLike | None = None, strays: ArrayLike = 1.0) -> Floats:
         """Return the difference of K, real and imaginary part, over |K| where that is large.
 
         Parameters
         ----------
-        values, strays : array_like
+        values, second, strays : array_like
             As for `LosslessLadder.characteristic`.
 
         Returns
@@ -114,7 +114,7 @@ class Misfit:
         Smoother than `residual`, for values that are far off: K is a ratio of low-order polynomials in every value.
         It also holds the phase of K, which an ideal response does not ask for.
         """
-        k = self._ladder.characteristic(values, self._frequency_hz, strays=strays)
+        k = self._ladder.characteristic(values, self._frequency_hz, second=second, strays=strays)
         scaled = (k - self._wanted) * (20 / math.log(10) * self._weight / (0.1 + np.abs(self._wanted)))
         return np.concatenate([scaled.real, scaled.imag], axis=1)
 

@@ -60,12 +60,6 @@ class Triangle:
         """Return the problem of the last unknowns, the others following at their best."""
         return Triangle(self.factor[-count:, -count:], self.offset[-count:])
 
-    def follow(self, last: Floats) -> Floats:
-        """Return the best first unknowns for given last ones."""
-        split = self.offset.size - last.size
-        target = self.offset[:split] + self.factor[:split, split:] @ last
-        return np.asarray(np.linalg.solve(self.factor[:split, :split], -target))
-
 
 def best_combinations(problem: Triangle, steps: Sequence[Floats], *, kept: int = KEPT) -> NDArray[np.intp]:
     """Search the choices for the combinations with the least squares.

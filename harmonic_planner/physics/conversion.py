@@ -129,7 +129,7 @@ def conversion_matrix(device: Device, times: int, *, carrier_index: int, count: 
     direct = index[:, np.newaxis] - index
     mirrored = index[:, np.newaxis] + index
     ratios = _ratios(device, times, 2 * count // carrier_index)
-    scale = _zone_scale(device, times, carrier_index=carrier_index, count=count)
+    scale = zone_scale(device, times, carrier_index=carrier_index, count=count)
     if power:
         ratios, scale = ratios**2, scale**2
     paths = np.zeros((count, count))
@@ -137,6 +137,40 @@ def conversion_matrix(device: Device, times: int, *, carrier_index: int, count: 
         reached = distance % carrier_index == 0
         paths += np.where(reached, ratios[np.abs(distance) // carrier_index], 0.0)
     return np.asarray(scale[:, np.newaxis] * paths)
+
+
+def zone_scale(device: Device, times: int, *, carrier_index: int, count: int) -> Array:
+    """Return what levels given in ``lines_dbc`` multiply every output line by.
+
+    Parameters
+    ----------
+    device
+        The multiplier.
+    times
+        Factor N.
+    carrier_index
+        Grid index of the input carrier.
+    count
+        Number of grid lines, j = 1 … count.
+
+    Returns
+    -------
+    ndarray, shape (count,)
+        Given over modelled level of the nearest multiple of the carrier, the larger one halfway between two; 1 in the
+        zone of the wanted line, in that of dc, and in zones without a given or a modelled line.
+    """
+    zones = count // carrier_index + 1
+    by_zone = np.ones(zones + 1)
+    if device.lines_dbc:
+        modelled = _modelled_lines(_accepted(device, times, zones), times)
+        for m, level_dbc in device.lines_dbc.items():
+            if m <= zones and m != times and modelled[m] >= UNMODELLED:
+                by_zone[m] = 10 ** (level_dbc / 20) / modelled[m]
+    below, beyond = np.divmod(np.arange(1, count + 1), carrier_index)
+    lower, upper = by_zone[below], by_zone[below + 1]
+    return np.where(
+        2 * beyond < carrier_index, lower, np.where(2 * beyond > carrier_index, upper, np.maximum(lower, upper))
+    )
 
 
 def am_slope(device: Device, times: int) -> float:
@@ -317,19 +351,3 @@ def _modelled_lines(s: Spectrum, times: int) -> Array:
 def _ratios(device: Device, times: int, m_max: int) -> Array:
     s = _accepted(device, times, m_max)
     return np.asarray(np.abs(s.G[: m_max + 1]) / (2 * abs(float(s.F[times]))))
-
-
-def _zone_scale(device: Device, times: int, *, carrier_index: int, count: int) -> Array:
-    """Return the scale of every output line, shape (count,)."""
-    zones = count // carrier_index + 1
-    by_zone = np.ones(zones + 1)
-    if device.lines_dbc:
-        modelled = _modelled_lines(_accepted(device, times, zones), times)
-        for m, level_dbc in device.lines_dbc.items():
-            if m <= zones and m != times and modelled[m] >= UNMODELLED:
-                by_zone[m] = 10 ** (level_dbc / 20) / modelled[m]
-    below, beyond = np.divmod(np.arange(1, count + 1), carrier_index)
-    lower, upper = by_zone[below], by_zone[below + 1]
-    return np.where(
-        2 * beyond < carrier_index, lower, np.where(2 * beyond > carrier_index, upper, np.maximum(lower, upper))
-    )

@@ -15,13 +15,15 @@ from harmonic_planner.filters.response import Response, sweep
 from harmonic_planner.filters.snap import snap
 from harmonic_planner.filters.topologies import REGISTRY, TopologyError
 from harmonic_planner.model import VERDICT_RANK, ElementReport, ElementVerdict
-from harmonic_planner.parts.kits import Kit
+from harmonic_planner.parts.kits import InductorKit, Kit
+from harmonic_planner.parts.quantities import readable
 from harmonic_planner.physics.prototypes import Prototype
 from harmonic_planner.planning.jobs import Action, Array, Attenuation, Job, act
 
 _MIDBAND_POINTS = 21
 _MIDBAND_SHARE = 0.5
 _WIDEST_MIDBAND = 0.5
+_OFF_SHELF = 1.1
 
 
 @dataclass(frozen=True)
@@ -47,10 +49,12 @@ class Built:
         Fraction of the centre.
     ideal : Circuit
         Values by design, no strays.
+    nominal : Circuit
+        The same elements with the values that are bought; the same as `ideal` in a sketch.
     circuit : Circuit
-        Values as bought; the same as `ideal` in a sketch.
+        As soldered: one element a part, two (C2a, C2b) where parts stand in parallel.
     parts : tuple of tuple of float
-        What is bought for each element, two where parts stand in parallel; empty in a sketch.
+        What is bought for each element of `nominal`, two where parts stand in parallel; empty in a sketch.
     midband_db : float
         Least loss around the centre.
     short_db : float
@@ -64,6 +68,7 @@ class Built:
     centre_hz: float
     bandwidth: float
     ideal: Circuit
+    nominal: Circuit
     circuit: Circuit
     parts: tuple[tuple[float, ...], ...]
     action: Action
@@ -115,7 +120,7 @@ def sketch(
     if ideal is None:
         return None
     return _measured(
-        job, prototype, form, centre_hz, bandwidth, ideal, ideal, (), required_db, _lossy(job, ideal, form)
+        job, prototype, form, centre_hz, bandwidth, ideal, ideal, ideal, (), required_db, _lossy(job, ideal, form)
     )
 
 
@@ -146,15 +151,35 @@ def realise(job: Job, drawn: Built, required_db: Array) -> Built:
         drawn.bandwidth,
         drawn.ideal,
         snapped.circuit,
+        snapped.soldered,
         snapped.parts,
         required_db,
-        as_built(job, snapped.circuit, drawn.form),
+        as_built(job, snapped.soldered, drawn.form),
     )
-    return replace(built, problem=absorbed.problem or snapped.problem)
+    wanted = {e.ref: e.value for e in absorbed.circuit.elements}
+    elements = tuple(_available(e, wanted[e.ref], drawn.form.kit) for e in built.elements)
+    return replace(built, elements=elements, problem=absorbed.problem or snapped.problem)
+
+
+def _available(report: ElementReport, wanted: float, kit: Kit) -> ElementReport:
+    """Return the report, swamped where the value wanted lies beyond what the kit has and another stands for it."""
+    shelf = kit.inductor if report.kind == "L" else kit.capacitor
+    least, most = (
+        (shelf.smallest_h, shelf.largest_h) if isinstance(shelf, InductorKit) else (shelf.smallest_f, shelf.largest_f)
+    )
+    if least / _OFF_SHELF <= wanted <= most * _OFF_SHELF:
+        return report
+    bound = (
+        f"below the kit's {readable(least, report.unit)}"
+        if wanted < least
+        else (f"above the kit's {readable(most, report.unit)}")
+    )
+    words = f"not available: {readable(wanted, report.unit)} is {bound}"
+    return replace(report, verdict="swamped", reason=f"{words}; {report.reason}")
 
 
 def passband_hz(built: Built) -> tuple[float, float]:
-    """Return the band edges [Hz], geometrically about the centre; of a one-sided filter its cut-off and a third of it."""
+    """Return the band edges [Hz], geometrically about the centre; of a one-sided filter its cut-off and beyond."""
     passes = REGISTRY[built.form.topology].passes
     if passes == "low":
         return built.centre_hz / 3, built.centre_hz
@@ -207,6 +232,7 @@ def _measured(
     centre_hz: float,
     bandwidth: float,
     ideal: Circuit,
+    nominal: Circuit,
     circuit: Circuit,
     parts: Sequence[tuple[float, ...]],
     required_db: Array,
@@ -224,6 +250,7 @@ def _measured(
         centre_hz=centre_hz,
         bandwidth=bandwidth,
         ideal=ideal,
+        nominal=nominal,
         circuit=circuit,
         parts=tuple(parts),
         action=action,
@@ -233,7 +260,7 @@ def _measured(
             form.kit,
             centre_hz=middle_hz,
             highest_line_hz=float(np.max(job.low_hz[needing], initial=centre_hz)),
-            nominal=circuit,
+            nominal=nominal,
         ),
         short_db=float(np.min((action.rejection_db - required_db)[needing], initial=np.inf)),
     )
@@ -241,5 +268,10 @@ def _measured(
 
 def meets(job: Job, built: Built) -> bool:
     """Tell whether the circuit gives every rejection within the loss and flatness limits."""
+    return built.short_db >= 0 and passes_carrier(job, built)
+
+
+def passes_carrier(job: Job, built: Built) -> bool:
+    """Tell whether the carrier passes within the loss and flatness limits."""
     flat = built.action.carrier_most_db - built.midband_db <= job.design.flatness_db + 1e-9
-    return built.short_db >= 0 and built.midband_db <= job.design.loss_db and flat
+    return built.midband_db <= job.design.loss_db and flat

@@ -103,10 +103,10 @@ def choose(job: Job, required_db: Array, *, carrier_db: float) -> Choice:
                 nearest = max((b for b in (nearest, built) if b is not None), key=lambda b: b.short_db)
                 continue
             if built.verdict != "swamped":
-                return Choice(built, built, _why(built, seen), windows)
+                return Choice(built, built, why(built, seen), windows)
             strained = min((b for b in (strained, built) if b is not None), key=lambda b: b.strain)
     if strained is not None:
-        return Choice(strained, strained, _why(strained, seen), windows)
+        return Choice(strained, strained, why(strained, seen), windows)
     if nearest is None and hopeless:
         nearest = realise(job, min(hopeless, key=lambda found: found[0])[1], required_db)
     return Choice(None, nearest, _why_not(job, required_db, carrier_db, windows, nearest), windows)
@@ -238,7 +238,7 @@ def promise(drawn: Built) -> tuple[float, ...]:
     return *drawn.strain, round(drawn.midband_db, 1), drawn.part_count, -drawn.bandwidth
 
 
-def _why(chosen: Built, seen: Sequence[Built]) -> str:
+def why(chosen: Built, seen: Sequence[Built]) -> str:
     """Say in one sentence with numbers why this filter."""
     words = f"{_described(chosen)}: {_worst_words(chosen)}, {chosen.midband_db:.1f} dB loss"
     other = next((b for b in seen if b.topology != chosen.topology), None)

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
-from functools import lru_cache
+from functools import cache
 
 import numpy as np
 
@@ -24,7 +24,7 @@ def allowed_topologies(job: Job) -> tuple[Topology, ...]:
     return tuple(t for name in expand(job.design.topology) if (t := REGISTRY[name]).passes == "band")
 
 
-@lru_cache(maxsize=None)
+@cache
 def realises(topology: str, prototype: Prototype) -> bool:
     """Tell whether a topology can realise a prototype between equal impedances, at some band."""
     try:

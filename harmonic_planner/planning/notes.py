@@ -6,15 +6,15 @@ from collections.abc import Sequence
 
 import numpy as np
 
-from harmonic_planner.chain.assemble import Array, ChainArrays
+from harmonic_planner.chain.assemble import ChainArrays
 from harmonic_planner.chain.levels import CarrierLevels
 from harmonic_planner.chain.propagate import Comb, carrier_spread
+from harmonic_planner.chain.second_order import needs_exact
 from harmonic_planner.model import Scenario
-from harmonic_planner.physics.conversion import am_slope, check_device, second_order_near_db
+from harmonic_planner.physics.conversion import check_device
 from harmonic_planner.planning.jobs import Job
 
 _OUTPUT_TOLERANCE_DB = 2.0
-_SECOND_ORDER_GUARD_DB = 6.0
 _POWER_CAUTION_DBM = 30.0
 _SPREAD_WARNING_DB = 0.5
 
@@ -62,7 +62,11 @@ def warnings_for(
         off = max(wanted - low, high - wanted)
         if off > _OUTPUT_TOLERANCE_DB:
             found.append(f"output.level = {wanted:g} dBm is asked, {low:.1f} to {high:.1f} dBm come out")
-    found += _second_order(scenario, chain, combs)
+    found += [
+        f"{scenario.stages[x.stage].name}: residuals of {x.residuals_dbc:.1f} dBc in all at its input can make "
+        f"lines of second order up to {x.level_dbc:.1f} dBc at the output, which the linear sums leave out"
+        for x in needs_exact(scenario, chain, combs)
+    ]
     for stage, spread in zip(scenario.stages, carrier_spread(chain, combs), strict=True):
         spread_db = -20 * np.log10(max(1 - spread ** (1 / chain.exponent), 1e-3))
         if spread_db > _SPREAD_WARNING_DB:
@@ -70,41 +74,6 @@ def warnings_for(
                 f"{stage.name}: residuals that land on the carrier spread its level by up to {spread_db:.1f} dB"
             )
     return tuple(found)
-
-
-def _second_order(scenario: Scenario, chain: ChainArrays, combs: Sequence[Comb]) -> list[str]:
-    """Name the multipliers at which lines of second order may come near a limit.
-
-    Products of residuals that are all multiples of the input carrier fall on the device's own lines, which the filter
-    rejects anyway; products with at least one residual apart from those can come out beside the carrier.
-    """
-    found = []
-    limit_db = min((float(chain.to_db(s.limit.min())) for s in chain.stages), default=np.inf)
-    for i, (stage, comb) in enumerate(zip(scenario.stages, combs, strict=True)):
-        if stage.device is None:
-            continue
-        amplitude = comb.entering ** (1 / chain.exponent)
-        total = amplitude.sum(axis=-1)
-        apart = (amplitude * _apart(chain, scenario, i)).sum(axis=-1)
-        product = float(np.max(apart * (2 * total - apart)))
-        if product <= 0:
-            continue
-        made_db = 20 * np.log10(product) + second_order_near_db(stage.device, stage.times)
-        for later in scenario.stages[i + 1 :]:
-            if later.device is not None:
-                made_db += 20 * np.log10((later.times + abs(am_slope(later.device, later.times))) / 2)
-        if made_db > limit_db - _SECOND_ORDER_GUARD_DB:
-            found.append(
-                f"{stage.name}: residuals of {20 * np.log10(float(total.max())):.1f} dBc in all at its input can make "
-                f"lines of second order up to {made_db:.1f} dBc at the output, which the linear sums leave out"
-            )
-    return found
-
-
-def _apart(chain: ChainArrays, scenario: Scenario, index: int) -> Array:
-    """Mark the lines that are no multiples of the carrier entering stage `index`, as 0 or 1, (lines,)."""
-    carrier_in = chain.grid.index(scenario.carrier(index - 1)) + 1
-    return np.asarray(np.arange(1, chain.grid.count + 1) % carrier_in != 0, dtype=float)
 
 
 def assumptions_for(scenario: Scenario, chain: ChainArrays, jobs: Sequence[Job]) -> tuple[str, ...]:

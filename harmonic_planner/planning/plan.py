@@ -12,6 +12,7 @@ from harmonic_planner.parts.kits import Kit, kit_names, load_kit
 from harmonic_planner.planning.built import Built
 from harmonic_planner.planning.evaluate import Run, beyond_db, run
 from harmonic_planner.planning.jobs import Job, make_jobs, sample
+from harmonic_planner.planning.measured import notes_on_measured, refuse_beyond
 from harmonic_planner.planning.proposals import NO_ADVICE, Advice, propose
 from harmonic_planner.planning.selfcheck import run_checks
 from harmonic_planner.planning.settle import Settled, settle
@@ -58,6 +59,7 @@ def work_out(scenario: Scenario) -> WorkedOut:
 
     samples = [sample(job, f.attenuation) for job, f in zip(jobs, settled.filters, strict=True)]
     transmissions = [s.transmission for s in samples]
+    beyond_sweep = refuse_beyond(chain, jobs, transmissions)
     plan = summarise(
         Findings(
             scenario=scenario,
@@ -70,6 +72,7 @@ def work_out(scenario: Scenario) -> WorkedOut:
             levels=carrier_levels(scenario, [s.carrier_db for s in samples]),
             advice=_advise(scenario, chain, jobs, settled, transmissions, margins_db),
             checks=run_checks(scenario, chain, jobs, settled, margins_db),
+            assumed=(*notes_on_measured(scenario), *beyond_sweep),
         )
     )
     return WorkedOut(plan, tuple(f.built for f in settled.filters))

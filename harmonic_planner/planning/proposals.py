@@ -23,6 +23,7 @@ _MORE_RESONATORS = 4
 _KINDS_BUILT = 4
 _IMPEDANCE_STEPS = (2.0, 0.5, 4.0)
 _WIDER = "wider"
+_ROUNDING_DB = 1e-6
 
 ChainMargin = Callable[[int, Built], float]
 """(stage index, its new filter) -> least output margin beyond the design margin [dB]."""
@@ -60,20 +61,22 @@ def propose(
     Returns
     -------
     Advice
-        Only changes that keep every limit and have fewer or milder flags than `chosen`.
+        Only changes that give every rejection asked of the stage, leave no limit of the chain worse off than it is
+        while it is missed, and have fewer or milder flags than `chosen`.
     """
     sound = meets(job, chosen)
     if chosen.verdict == "ok" and sound:
         return NO_ADVICE
+    now_db = margin(job.index, chosen) + _ROUNDING_DB
     kept: dict[str, tuple[Built, float]] = {}
     tried: list[Built] = []
     for kind, built in _alternatives(job, chosen, required_db, carrier_db, other_kits, kept):
         tried.append(built)
         better = built.strain < chosen.strain or (not sound and built.strain[0] == 0)
-        if not better or (kind in kept and _price(built) >= _price(kept[kind][0])):
+        if not better or not meets(job, built) or (kind in kept and _price(built) >= _price(kept[kind][0])):
             continue
         beyond_db = margin(job.index, built)
-        if beyond_db >= 0:
+        if beyond_db >= min(0.0, now_db):
             kept[kind] = (built, beyond_db)
     ranked = sorted(kept.values(), key=lambda found: _price(found[0]))
     proposals = tuple(_proposal(job, chosen, *found) for found in ranked[:_MOST])
@@ -275,6 +278,6 @@ def _none_helps(job: Job, tried: list[Built], required_db: Array) -> str:
             else f"{best.midband_db:.1f} dB of loss"
         )
     return (
-        f"nothing that keeps every limit can be built of lumped parts at {job.centre_hz / 1e6:.5g} MHz: the best tried, "
-        f"{best.topology} order {best.prototype.order} of {best.form.kit.name} at {best.bandwidth:.1%}, has {limit}"
+        f"nothing that keeps every limit can be built of lumped parts at {job.centre_hz / 1e6:.5g} MHz: the best "
+        f"tried, {best.topology} order {best.prototype.order} of {best.form.kit.name} at {best.bandwidth:.1%}, has {limit}"
     )

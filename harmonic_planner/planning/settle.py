@@ -7,17 +7,18 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from harmonic_planner.chain.assemble import Array, ChainArrays
 from harmonic_planner.chain.allocate import allocate
 from harmonic_planner.chain.allocation import Allocation
+from harmonic_planner.chain.assemble import Array, ChainArrays
 from harmonic_planner.chain.budget import Rejections, requirement, with_margin
 from harmonic_planner.chain.screening import Candidates
-from harmonic_planner.model import GivenFilter
-from harmonic_planner.planning.candidates import Offer, offer
+from harmonic_planner.model import GivenFilter, MeasuredFilter
+from harmonic_planner.planning.candidates import Candidate, Offer, offer
 from harmonic_planner.planning.choice import able, report_windows
 from harmonic_planner.planning.evaluate import beyond_db
 from harmonic_planner.planning.jobs import Job, is_far, sample
-from harmonic_planner.planning.stage_filter import StageFilter, given, held_to, planned, unfiltered
+from harmonic_planner.planning.measured import measured
+from harmonic_planner.planning.stage_filter import StageFilter, accepted, given, held_to, planned, unfiltered
 
 _ROUNDS = 4
 _HEADROOM_DB = 0.02
@@ -69,13 +70,16 @@ def settle(chain: ChainArrays, jobs: Sequence[Job], margins_db: Sequence[float])
             if ideal.met or not _same_obstacle(ideal, chosen):
                 rows, chosen = ideal_rows, ideal
         spec = requirement(tight, chosen.rejections(rows), filtered)
-        losses = [o.carrier_db(n, p) for o, n, p in zip(options, chosen.orders, chosen.picks, strict=True)]
+        picked = [o.candidate(n, p) for o, n, p in zip(options, chosen.orders, chosen.picks, strict=True)]
         filters = [
-            o.fixed or planned(job, r, carrier_db=loss)
-            for job, o, r, loss in zip(jobs, options, spec.required_db, losses, strict=True)
+            o.fixed or (unfiltered(job) if c is None else planned(job, r, c))
+            for job, o, r, c in zip(jobs, options, spec.required_db, picked, strict=True)
         ]
+        filters = _eased(tight, jobs, filters, picked, chosen.rejections(rows), filtered)
         beyond = _beyond_db(chain, jobs, filters, margins_db)
-        this = _Round(tuple(filters), tuple(losses), beyond, chosen)
+        if beyond >= 0:
+            filters = [accepted(job, f) for job, f in zip(jobs, filters, strict=True)]
+        this = _Round(tuple(filters), tuple(picked), beyond, chosen)
         if best is not None and this.rank >= best.rank:
             break
         best = this
@@ -87,18 +91,17 @@ def settle(chain: ChainArrays, jobs: Sequence[Job], margins_db: Sequence[float])
             break
         drawn_in_db += _HEADROOM_DB - beyond
     assert best is not None
-    filters, losses = list(best.filters), list(best.losses)
-    filters, needed = _lowered(chain, target, jobs, filters, options, losses, margins_db)
+    filters, needed = _lowered(chain, target, jobs, best, margins_db)
     held = (held_to(job, f, r) for job, f, r in zip(jobs, filters, needed.required_db, strict=True))
     return Settled(tuple(held), needed, best.chosen)
 
 
 @dataclass(frozen=True)
 class _Round:
-    """One try at all stages: the filters, the carrier losses they were judged with, and the margin beyond what is asked."""
+    """One try at all stages: the filters, the candidates they stand for, and the margin beyond what is asked."""
 
     filters: tuple[StageFilter, ...]
-    losses: tuple[float, ...]
+    picked: tuple[Candidate | None, ...]
     beyond_db: float
     chosen: Allocation
 
@@ -142,28 +145,49 @@ def _learn(job: Job, known: _Learned, stage_filter: StageFilter, required_db: Ar
     )
 
 
+def _eased(
+    tight: ChainArrays,
+    jobs: Sequence[Job],
+    filters: Sequence[StageFilter],
+    picked: Sequence[Candidate | None],
+    relied_db: Sequence[Array],
+    filtered: Sequence[bool],
+) -> list[StageFilter]:
+    """Choose again where a filter fell short of its share, for what is left to it beside the others as built."""
+    current = list(filters)
+    for i, candidate in enumerate(picked):
+        if current[i].meets or candidate is None:
+            continue
+        achieved_db = [f.action.rejection_db for f in current]
+        achieved_db[i] = relied_db[i]
+        alone = [j == i for j in range(len(jobs))]
+        left = requirement(tight, achieved_db, filtered, movable=alone)
+        trial = planned(jobs[i], left.required_db[i], candidate)
+        if trial.meets:
+            current[i] = trial
+    return current
+
+
 def _lowered(
     chain: ChainArrays,
     target: ChainArrays,
     jobs: Sequence[Job],
-    filters: Sequence[StageFilter],
-    options: Sequence[_Options],
-    losses: Sequence[float],
+    start: _Round,
     margins_db: Sequence[float],
 ) -> tuple[list[StageFilter], Rejections]:
     """Take a lower order wherever what the circuits now do leaves a window for it, and the chain confirms it."""
     filtered = [job.stage.filter != "none" for job in jobs]
-    current = list(filters)
+    current = list(start.filters)
     needed = requirement(target, [f.action.rejection_db for f in current], filtered)
     if not all(f.meets for f in current):
         return current, needed
     improved = True
     while improved:
         improved = False
-        for i, (job, option) in enumerate(zip(jobs, options, strict=True)):
-            if option.fixed is not None or not _window_below(job, current[i], needed.required_db[i], losses[i]):
+        for i, (job, candidate) in enumerate(zip(jobs, start.picked, strict=True)):
+            if candidate is None or not _window_below(job, current[i], needed.required_db[i], candidate.carrier_db):
                 continue
-            trial = planned(job, needed.required_db[i], carrier_db=losses[i])
+            trial = planned(job, needed.required_db[i], candidate)
             if not trial.meets or _order(trial) >= _order(current[i]) or _strain(trial) > _strain(current[i]):
                 continue
             changed = [*current[:i], trial, *current[i + 1 :]]
@@ -204,15 +228,17 @@ class _Options:
     rows: Candidates
     ideal: Candidates
 
-    def carrier_db(self, order: int, pick: int) -> float:
-        """Return the carrier loss that goes with a row; 0 where there was nothing to choose."""
-        return self.offered.filters[order][pick].carrier_db if order in self.offered.filters else 0.0
+    def candidate(self, order: int, pick: int) -> Candidate | None:
+        """Return the filter behind a row, None where there was nothing to choose."""
+        return self.offered.filters[order][pick] if order in self.offered.filters else None
 
 
 def _options(job: Job, count: int) -> _Options:
     """Return a stage's options; one row of order 0 where there is no choice."""
     if isinstance(job.stage.filter, GivenFilter):
         fixed = given(job, job.stage.filter)
+    elif isinstance(job.stage.filter, MeasuredFilter):
+        fixed = measured(job, job.stage.filter)
     elif job.stage.filter == "none":
         fixed = unfiltered(job)
     else:

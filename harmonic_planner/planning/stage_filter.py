@@ -10,8 +10,10 @@ import numpy as np
 from harmonic_planner.filters.topologies import expand
 from harmonic_planner.model import FilterSource, GivenFilter, PlannerError
 from harmonic_planner.physics.prototypes import Prototype
-from harmonic_planner.planning.built import Built, Form, as_built, lossless, realise, sketch
-from harmonic_planner.planning.choice import Choice, choose, report_windows
+from harmonic_planner.planning.built import Built, Form, as_built, lossless, passes_carrier, realise, sketch
+from harmonic_planner.planning.candidates import Candidate
+from harmonic_planner.planning.choice import Choice, choose, report_windows, why
+from harmonic_planner.planning.forms import forms
 from harmonic_planner.planning.jobs import (
     Action,
     Array,
@@ -105,22 +107,45 @@ def given(job: Job, description: GivenFilter) -> StageFilter:
     )
 
 
-def planned(job: Job, required_db: Array, *, carrier_db: float) -> StageFilter:
+def planned(job: Job, required_db: Array, picked: Candidate) -> StageFilter:
     """Choose the filter that gives `required_db`; where there is none, the nearest one and why it falls short.
 
     Parameters
     ----------
     job : Job
     required_db : (lines,) float
-    carrier_db : float
-        The carrier's loss that leakage is judged against [dB].
+    picked : Candidate
+        What the joint choice relied on; its carrier loss is what leakage is judged against, and it is built where
+        nothing else can be.
     """
-    choice = choose(job, required_db, carrier_db=carrier_db)
+    choice = choose(job, required_db, carrier_db=picked.carrier_db)
     if choice.built is not None:
         return replace(from_built(job, choice.built), choice=choice, reason=choice.reason)
-    if choice.best is not None:
-        return replace(from_built(job, choice.best), choice=choice, meets=False, reason=choice.reason)
+    best = choice.best or _as_picked(job, picked, required_db)
+    if best is not None:
+        return replace(from_built(job, best), choice=choice, meets=False, reason=choice.reason)
     return replace(unfiltered(job, wanted=True, reason=choice.reason), choice=choice)
+
+
+def accepted(job: Job, stage_filter: StageFilter) -> StageFilter:
+    """Return a filter that fell short of its own share as one that meets, where the chain as a whole meets its limits.
+
+    Loss and flatness must hold all the same.
+    """
+    built = stage_filter.built
+    if stage_filter.meets or built is None or not passes_carrier(job, built):
+        return stage_filter
+    return replace(stage_filter, meets=True, reason=why(built, ()))
+
+
+def _as_picked(job: Job, picked: Candidate, required_db: Array) -> Built | None:
+    """Return the joint choice's own candidate as built, in the first form that can be designed."""
+    centre_hz, bandwidth = picked.centre_hz, picked.bandwidth
+    for form in forms(job, picked.topology, picked.prototype, centre_hz=centre_hz, bandwidth=bandwidth):
+        drawn = sketch(job, picked.prototype, form, centre_hz=centre_hz, bandwidth=bandwidth, required_db=required_db)
+        if drawn is not None:
+            return realise(job, drawn, required_db)
+    return None
 
 
 def held_to(job: Job, stage_filter: StageFilter, required_db: Array) -> StageFilter:
@@ -128,4 +153,8 @@ def held_to(job: Job, stage_filter: StageFilter, required_db: Array) -> StageFil
     if stage_filter.choice is None:
         return stage_filter
     windows = report_windows(job, required_db, carrier_db=stage_filter.action.carrier_most_db)
-    return replace(stage_filter, choice=replace(stage_filter.choice, windows=windows))
+    reason, built = stage_filter.reason, stage_filter.built
+    below = [w.order for w in windows if w.feasible and built is not None and w.order < built.resonators]
+    if stage_filter.meets and below:
+        reason += f"; by its prototype order {min(below)} has a window too, but no circuit of it as built does all"
+    return replace(stage_filter, reason=reason, choice=replace(stage_filter.choice, windows=windows))

@@ -15,6 +15,7 @@ from harmonic_planner.model import (
     ElementReport,
     FilterPlan,
     LineLevel,
+    MeasuredFilter,
     OutputPlan,
     PhaseNoisePoint,
     Plan,
@@ -26,6 +27,7 @@ from harmonic_planner.physics.noise import phase_noise
 from harmonic_planner.planning.built import Built, response
 from harmonic_planner.planning.evaluate import FAINTEST_DBC, Run, output_lines, worst_db
 from harmonic_planner.planning.jobs import Job, act
+from harmonic_planner.planning.measured import measured_plan
 from harmonic_planner.planning.notes import assumptions_for, cautions_for, warnings_for
 from harmonic_planner.planning.proposals import Advice
 from harmonic_planner.planning.selfcheck import Check
@@ -48,6 +50,8 @@ class Findings:
         Of every filter over span and drift.
     run, other : Run
         Under the plan's phase rule, and under the other one.
+    assumed : sequence of str
+        What was taken for granted beside what the scenario says.
     """
 
     scenario: Scenario
@@ -60,6 +64,7 @@ class Findings:
     levels: Sequence[CarrierLevels]
     advice: Sequence[Advice]
     checks: Sequence[Check]
+    assumed: Sequence[str] = ()
 
 
 def summarise(f: Findings) -> Plan:
@@ -87,7 +92,7 @@ def summarise(f: Findings) -> Plan:
         self_check=checked,
         self_checks=tuple(("passed: " if c.passed else "FAILED: ") + c.text for c in f.checks),
         warnings=warnings_for(f.scenario, f.chain, f.jobs, f.levels, f.run.combs),
-        assumptions=assumptions_for(f.scenario, f.chain, f.jobs),
+        assumptions=(*assumptions_for(f.scenario, f.chain, f.jobs), *f.assumed),
         cautions=cautions_for(f.levels),
         source_lines=_lines(f.chain, f.chain.source),
         output=output,
@@ -132,6 +137,8 @@ def _lines(chain: ChainArrays, comb: Array) -> tuple[LineLevel, ...]:
 def _filter(f: Findings, i: int) -> FilterPlan:
     job, chosen, advice = f.jobs[i], f.settled.filters[i], f.advice[i]
     built = chosen.built
+    if isinstance(job.stage.filter, MeasuredFilter):
+        return measured_plan(job, chosen, _requirement(f, i))
     if chosen.attenuation is None or chosen.prototype is None or chosen.centre_hz is None or chosen.bandwidth is None:
         return FilterPlan(source=chosen.source, reason=chosen.reason)
     highest = max(4 * chosen.centre_hz, 1.1 * _highest_needed(job, f.settled.needed.required_db[i]))
@@ -190,27 +197,27 @@ def _requirement(f: Findings, i: int) -> tuple[Requirement, ...]:
 
 def _elements(job: Job, built: Built, power_dbm: float) -> tuple[ElementReport, ...]:
     """Return every part with what is bought for it and what it bears at the stage's power."""
-    borne = {
-        s.ref: s
-        for s in stress(built.circuit, built.form.kit, frequency_hz=job.carrier_hz, power_dbm=power_dbm, points=11)
-    }
+    borne = stress(built.circuit, built.form.kit, frequency_hz=job.carrier_hz, power_dbm=power_dbm, points=11)
     bought = {
         e.ref: parts
         for e, parts in zip(
-            built.circuit.elements, built.parts or [(e.value,) for e in built.circuit.elements], strict=True
+            built.nominal.elements, built.parts or [(e.value,) for e in built.nominal.elements], strict=True
         )
     }
-    return tuple(
-        replace(
-            element,
-            bought=bought[element.ref],
-            peak_v=borne[element.ref].worst_peak_voltage_v,
-            rms_a=borne[element.ref].worst_rms_current_a,
-            rated_v=borne[element.ref].voltage_rating_v,
-            rated_a=borne[element.ref].current_rating_a,
+    reports = []
+    for element in built.elements:
+        of_element = [s for s in borne if s.ref in (element.ref, f"{element.ref}a", f"{element.ref}b")]
+        reports.append(
+            replace(
+                element,
+                bought=bought[element.ref],
+                peak_v=max(s.worst_peak_voltage_v for s in of_element),
+                rms_a=max(s.worst_rms_current_a for s in of_element),
+                rated_v=of_element[0].voltage_rating_v,
+                rated_a=of_element[0].current_rating_a,
+            )
         )
-        for element in built.elements
-    )
+    return tuple(reports)
 
 
 def _return_loss_db(job: Job, chosen: StageFilter) -> float | None:

@@ -13,6 +13,7 @@ from harmonic_planner.planning.evaluate import Run
 from harmonic_planner.planning.settle import Settled
 
 _ROUNDING_DB = 1e-9
+_LEAK_DB = 3.0
 
 
 def limits_met(scenario: Scenario, run: Run, settled: Settled) -> bool:
@@ -42,7 +43,7 @@ def sentence(
     if met:
         limits = (
             f"every line is within its limit; the closest, line {line} {where}, has {run.margin_db[to, k]:.1f} dB of "
-            f"margin with {resonators} resonators in {count} filters"
+            f"margin with {f'{resonators} resonators in {count} filters' if count else 'the filters that are there'}"
         )
     else:
         limits = f"line {line} {where} has a margin of {run.margin_db[to, k]:.1f} dB" + _shortfall(
@@ -51,7 +52,7 @@ def sentence(
     if not checked:
         return f"Not met: a self-check failed; {limits}."
     if met and buildable:
-        return f"Met: {limits}, and every part can be built."
+        return f"Met: {limits}{', and every part can be built' if count else ''}."
     problems = [] if met else [limits]
     if not buildable:
         problems.append(_unbuildable(stages))
@@ -62,19 +63,36 @@ def sentence(
 
 def _shortfall(scenario: Scenario, chain: ChainArrays, settled: Settled, to: int, k: int) -> str:
     """Say what keeps the limit from being met."""
+    out_of_reach = bool(settled.needed.out_of_reach[to, k])
+    if out_of_reach and (overlap := _overlap(scenario, chain, settled, to, k)):
+        return f", and no filter can take it out: {overlap}"
+    amplifier = scenario.stages[to].amplifier
+    if out_of_reach and amplifier is not None and chain.stages[to].amplifier[k] > 0:
+        return (
+            f", and the amplifier of {scenario.stages[to].name} makes it behind the last filter: "
+            "a clean-up stage (times = 1) with a filter would take it out"
+        )
     unfit = [(s.name, f.reason) for s, f in zip(scenario.stages, settled.filters, strict=True) if not f.meets]
     if unfit:
         return f"; {unfit[0][0]} has no filter that does what is needed: {unfit[0][1]}"
-    if settled.needed.out_of_reach[to, k]:
-        amplifier = scenario.stages[to].amplifier
-        if amplifier is not None and chain.stages[to].amplifier[k] > 0:
-            return (
-                f", and the amplifier of {scenario.stages[to].name} makes it behind the last filter: "
-                "a clean-up stage (times = 1) with a filter would take it out"
-            )
-        overlap = _overlap(scenario, chain, settled, to, k)
-        return f", and no filter can take it out: {overlap or 'it is too close to the carrier, or leaks past'}"
+    if out_of_reach:
+        return f", and no filter can take it out: {_leak(scenario, chain, settled, to, k)}"
     return ""
+
+
+def _leak(scenario: Scenario, chain: ChainArrays, settled: Settled, to: int, k: int) -> str:
+    """Say whether isolation is what limits a line, at the stage where it was born."""
+    rejections = [chain.from_db(-f.action.rejection_db) for f in settled.filters]
+    worst = max(births(chain, rejections, to=to), key=lambda b: float(b.paths[k].max()))
+    born, i = int(worst.paths[k].argmax()), max(worst.stage, 0)
+    action, name = settled.filters[i].action, scenario.stages[i].name
+    if action.skirt_db[born] - action.rejection_db[born] > _LEAK_DB:
+        return (
+            f"line {chain.grid.line(born)} leaks past the filter of {name}, which alone gives "
+            f"{action.skirt_db[born]:.0f} dB and with the leak {action.rejection_db[born]:.0f} dB: a shield is needed, "
+            "not a resonator"
+        )
+    return "it is too close to the carrier"
 
 
 def _overlap(scenario: Scenario, chain: ChainArrays, settled: Settled, to: int, k: int) -> str:

@@ -4,6 +4,7 @@ from dataclasses import replace
 
 from harmonic_planner.export.filter_files import filter_files, filter_names
 from harmonic_planner.export.names import stage_stem
+from harmonic_planner.export.nodes import line_frequency_hz
 from harmonic_planner.export.plan_json import plan_json
 from harmonic_planner.export.tables import elements_csv, lines_csv, requirements_csv
 from harmonic_planner.model import Plan, StagePlan
@@ -50,7 +51,8 @@ def with_file_names(worked: WorkedOut) -> Plan:
 
 
 def _of_filter(plan: Plan, number: int, stage: StagePlan, built: Built) -> dict[str, str]:
-    """Write the files of one filter; lines that need no rejection are not swept for."""
+    """Write the files of one filter; lines that need no rejection have no frequency of their own in them."""
+    present_hz = [edge for level in stage.device_lines for edge in line_frequency_hz(plan, level.line)]
     return filter_files(
         stage_stem(number, stage.name),
         f"{plan.title}: {stage.name}",
@@ -59,4 +61,5 @@ def _of_filter(plan: Plan, number: int, stage: StagePlan, built: Built) -> dict[
         carrier_hz=stage.frequency_hz,
         passband_hz=passband_hz(built),
         lines_hz={r.line: r.frequency_hz for r in stage.filter.requirement if r.required_db > 0},
+        present_hz=(min(present_hz), max(present_hz)) if present_hz else None,
     )

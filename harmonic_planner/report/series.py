@@ -6,8 +6,9 @@ from dataclasses import dataclass
 from fractions import Fraction
 
 from harmonic_planner.export.nodes import line_frequency_hz
+from harmonic_planner.export.values import frequency_scale, quantity
 from harmonic_planner.model import LineLevel, Plan, StagePlan
-from harmonic_planner.report.text import decibels, frequency_scale, printable, quantity
+from harmonic_planner.report.text import decibels, is_one_sided, printable
 
 _LEAST_FLOOR_DBC = -80.0
 _ROOM = 1.06
@@ -241,8 +242,8 @@ def _filter_note(stage: StagePlan) -> str:
     made = stage.filter
     if made.centre_hz is None or made.bandwidth_hz is None:
         return f"No filter: {printable(made.reason)}" if made.reason else "No filter"
+    band = "cut-off" if is_one_sided(made.topology) else f"{quantity(made.bandwidth_hz, 'Hz', 3)} at"
     return (
         f"{(made.family or '').capitalize()} of order {made.order}, {made.topology or 'prototype'}, "
-        f"{quantity(made.bandwidth_hz, 'Hz', 3)} at {quantity(made.centre_hz, 'Hz')}, "
-        f"midband loss {decibels(made.loss_db)} dB"
+        f"{band} {quantity(made.centre_hz, 'Hz')}, midband loss {decibels(made.loss_db)} dB"
     )

@@ -1,51 +1,52 @@
 """What a person reads on the terminal: the verdict first, then why, then what would help."""
 
 import math
-from collections.abc import Iterable, Sequence
+from collections.abc import Sequence
 
-from rich import box
 from rich.console import Console
 from rich.table import Table
 from rich.text import Text
 
 from harmonic_planner.export.nodes import line_frequency_hz, origins_text
 from harmonic_planner.export.proposals import NumberedProposal, numbered_proposals
-from harmonic_planner.model import VERDICT_RANK, ElementVerdict, LineLevel, OutputLine, Plan, StagePlan
+from harmonic_planner.export.values import frequency_scale, number_text
+from harmonic_planner.model import (
+    VERDICT_RANK,
+    AllocationPlan,
+    ElementVerdict,
+    FilterPlan,
+    LineLevel,
+    OutputLine,
+    Plan,
+    StagePlan,
+)
+from harmonic_planner.report.console import STYLES, bullet, bullets, heading, section, table, verdict_line
+from harmonic_planner.report.parts import show_doubts
 from harmonic_planner.report.text import (
+    band_words,
+    circuit_words,
     decibels,
     filter_name,
-    frequency_scale,
+    is_one_sided,
     line_name,
-    number_text,
     printable,
-    quantity,
     span,
     span_of,
 )
 
-WIDTH = 80
 FAINTEST_DBC = -150.0
 """Lines below this at every node of a stage are counted, not shown."""
 
 _WORST_LINES = 5
-_MOST_FLAGS = 12
 _PROPOSALS_PER_STAGE = 2
 _LEAST_SHARE = 0.1
 _LONGEST_TOPOLOGY = 13
-"""A longer name wraps, so that the table of stages stays within the width."""
-_STYLES = {"ok": "green", "marginal": "yellow", "swamped": "bold red", "no filter": "bold red"}
-
-
-def console() -> Console:
-    """Return a console on standard output; 80 columns and no colour where that is not a terminal."""
-    probe = Console(highlight=False, markup=False, emoji=False)
-    return (
-        probe if probe.is_terminal else Console(width=WIDTH, highlight=False, markup=False, emoji=False, no_color=True)
-    )
+"""A longer name is broken at a hyphen, so that the table of stages stays within the width."""
+_MEASURED = ("touchstone", "table")
 
 
 def show_plan(plan: Plan, screen: Console) -> None:
-    """Show a plan: verdict, stages, worst output lines, flags, proposals, warnings, cautions.
+    """Show a plan: verdict, stages, worst output lines, parts to look at, proposals, warnings, cautions.
 
     Parameters
     ----------
@@ -54,16 +55,17 @@ def show_plan(plan: Plan, screen: Console) -> None:
     screen : Console
         Where to show it.
     """
-    good = plan.exit_status == 0
-    screen.print(Text(printable(plan.sentence), style="bold green" if good else "bold red"))
+    verdict_line(screen, plan.sentence, good=plan.exit_status == 0)
     screen.print(Text(printable(plan.title), style="dim"))
-    _section(screen, "Stages", _stage_table(plan))
-    _section(screen, "Output lines with the least margin", _worst_lines_table(plan))
-    _flags(plan, screen)
+    section(screen, "Stages", _stage_table(plan))
+    if plan.allocation is not None:
+        screen.print(allocation_words(plan.allocation))
+    section(screen, "Output lines with the least margin", _worst_lines_table(plan))
+    show_doubts(plan, screen)
     _proposals(plan, screen)
-    _bullets(screen, "Self-check" if plan.self_check else "Self-check FAILED", plan.self_checks)
-    _bullets(screen, "Warnings", plan.warnings)
-    _bullets(screen, "Cautions", plan.cautions)
+    bullets(screen, "Self-check" if plan.self_check else "Self-check FAILED", plan.self_checks)
+    bullets(screen, "Warnings", merged(plan.warnings, [stage.name for stage in plan.stages]))
+    bullets(screen, "Cautions", plan.cautions)
     if plan.assumptions:
         screen.print()
         count = len(plan.assumptions)
@@ -90,21 +92,16 @@ def show_lines(plan: Plan, screen: Console) -> None:
     screen.print("Levels in dBc, relative to the carrier at the same node; worst over the span.")
     first = plan.stages[0]
     source_hz = (float(first.frequency_hz[0] / first.line), float(first.frequency_hz[1] / first.line))
-    screen.print()
-    screen.print(Text(f"Source: line 1, {span(source_hz)}", style="bold"))
+    heading(screen, f"Source: line 1, {span(source_hz)}")
     if plan.source_lines:
         _comb_table(plan, screen, (("source", plan.source_lines),))
     else:
         screen.print("no other line")
     for number, stage in enumerate(plan.stages, start=1):
-        screen.print()
-        screen.print(
-            Text(
-                f"Stage {number}, {printable(stage.name)}: ×{stage.times} to line {line_name(stage.line)}, "
-                f"{span(stage.frequency_hz)}, {decibels(stage.output_dbm)} dBm; "
-                f"filter {_filter_words(stage)}",
-                style="bold",
-            )
+        heading(
+            screen,
+            f"Stage {number}, {printable(stage.name)}: ×{stage.times} to line {line_name(stage.line)}, "
+            f"{span(stage.frequency_hz)}, {decibels(stage.output_dbm)} dBm; filter {_filter_words(stage.filter)}",
         )
         _comb_table(
             plan,
@@ -117,78 +114,105 @@ def show_lines(plan: Plan, screen: Console) -> None:
         )
 
 
-def _table(*columns: str, right: Iterable[str] = (), fixed: Iterable[str] = (), gap: int = 2) -> Table:
-    """Make an empty table with a rule under its heads; numbers stand to the right, fixed columns never wrap."""
-    table = Table(box=box.SIMPLE_HEAD, show_edge=False, pad_edge=False, padding=(0, gap - 1, 0, 0), header_style="bold")
-    aligned = set(right)
-    unbroken = aligned | set(fixed)
-    for column in columns:
-        table.add_column(
-            column, justify="right" if column in aligned else "left", overflow="fold", no_wrap=column in unbroken
-        )
-    return table
+def allocation_words(allocation: AllocationPlan) -> str:
+    """Say how many resonators all stages need together, and whether fewer could do.
+
+    Parameters
+    ----------
+    allocation : AllocationPlan
+        The count as built, and what the search proved.
+
+    Returns
+    -------
+    str
+    """
+    count = f"Allocation: {allocation.total} resonator{'s' if allocation.total != 1 else ''}"
+    if allocation.proven:
+        return f"{count} in all, proven the least for these candidates"
+    return f"{count}; at least {allocation.lower_bound} are needed ({allocation.total} is not proven the least)"
 
 
-def _section(screen: Console, title: str, table: Table) -> None:
-    """Show a table under its title."""
-    screen.print()
-    screen.print(Text(title, style="bold"))
-    screen.print(table if table.row_count else Text("none"))
+def merged(texts: Sequence[str], stage_names: Sequence[str]) -> list[str]:
+    """Say once what is said of several stages alike.
 
+    Parameters
+    ----------
+    texts : sequence of str
+        Sentences, those about a stage with its name and a colon before them.
+    stage_names : sequence of str
+        Names of the stages.
 
-def _bullets(screen: Console, title: str, texts: Sequence[str]) -> None:
-    """Show sentences, if any, one after the other under a title."""
-    if not texts:
-        return
-    screen.print()
-    screen.print(Text(title, style="bold"))
+    Returns
+    -------
+    list of str
+        In the order in which each is first said.
+
+    Examples
+    --------
+    >>> merged(["a: too hot", "no lines given", "b: too hot"], ["a", "b"])
+    ['a, b: too hot', 'no lines given']
+    """
+    names: dict[str, list[str]] = {}
     for text in texts:
-        _bullet(screen, Text(printable(text)))
-
-
-def _bullet(screen: Console, text: Text, mark: str = "-") -> None:
-    """Show one sentence, indented behind a dash or another mark."""
-    grid = Table.grid(padding=(0, 1, 0, 0))
-    grid.add_row(mark, text)
-    screen.print(grid)
+        name, colon, said = text.partition(": ")
+        about_stage = bool(colon) and name in stage_names
+        names.setdefault(said if about_stage else text, []).extend([name] if about_stage else [])
+    return [f"{', '.join(of)}: {said}" if of else said for said, of in names.items()]
 
 
 def _stage_table(plan: Plan) -> Table:
-    """One row per stage."""
+    """One row per stage; kits stand below the topologies where there is more than one."""
     scale, unit = frequency_scale(min(stage.frequency_hz[1] for stage in plan.stages))
+    kits = {stage.filter.kit for stage in plan.stages if stage.filter.kit}
     carrier, centre = f"carrier\n{unit}", f"centre\n{unit}"
-    longest = max(len(stage.filter.topology or "") for stage in plan.stages)
+    circuit = "topology,\nkit" if len(kits) > 1 else "topology"
     right = (carrier, "band\n%", centre, "loss\ndB", "margin\ndB")
-    table = _table(
-        *("stage", carrier, "filter", "band\n%", centre, "topology", "loss\ndB", "margin\ndB", "parts"),
+    made = table(
+        *("stage", carrier, "filter", "band\n%", centre, circuit, "loss\ndB", "margin\ndB", "parts"),
         right=right,
-        fixed=("filter", "parts", "topology") if longest <= _LONGEST_TOPOLOGY else ("filter", "parts"),
+        fixed=("filter", "parts"),
         gap=1,
     )
+    made.columns[5].min_width = min(_LONGEST_TOPOLOGY, max(len(s.filter.topology or "") for s in plan.stages))
     for number, stage in enumerate(plan.stages, start=1):
-        made = stage.filter
-        band = made.bandwidth_hz / made.centre_hz if made.bandwidth_hz and made.centre_hz else None
-        margins = [need.margin_db for need in made.requirement if need.required_db > 0]
-        parts = _parts(stage)
-        table.add_row(
+        filter_plan = stage.filter
+        margins = [need.margin_db for need in filter_plan.requirement if need.required_db > 0]
+        words = [_broken(filter_plan.topology or "–")]
+        words += [filter_plan.kit] if len(kits) > 1 and filter_plan.kit else []
+        parts = _parts(filter_plan)
+        made.add_row(
             Text(f"{number} {printable(stage.name)}"),
             span_of(stage.frequency_hz, scale),
-            filter_name(made.family, made.order),
-            "–" if band is None else f"{100 * band:.1f}",
-            "–" if made.centre_hz is None else number_text(made.centre_hz / scale),
-            made.topology or "–",
-            decibels(made.loss_db),
+            _filter_words(filter_plan),
+            _band_percent(filter_plan),
+            "–" if filter_plan.centre_hz is None else number_text(filter_plan.centre_hz / scale),
+            Text("\n".join(words)),
+            decibels(filter_plan.loss_db),
             decibels(min(margins, default=None), signed=True),
-            Text(parts, style=_STYLES.get(parts, "")),
+            Text(parts, style=STYLES.get(parts, "")),
         )
-    return table
+    return made
 
 
-def _parts(stage: StagePlan) -> str:
-    """Say whether a stage's filter can be built: the worst verdict over its parts."""
-    made = stage.filter
+def _band_percent(made: FilterPlan) -> str:
+    """Write a bandpass's bandwidth as a share of its centre."""
+    if not made.bandwidth_hz or not made.centre_hz or is_one_sided(made.topology):
+        return "–"
+    return f"{100 * made.bandwidth_hz / made.centre_hz:.1f}"
+
+
+def _broken(name: str) -> str:
+    """Break a long name behind its last hyphen."""
+    start, hyphen, end = name.rpartition("-")
+    return f"{start}{hyphen}\n{end}" if hyphen and len(name) > _LONGEST_TOPOLOGY else name
+
+
+def _parts(made: FilterPlan) -> str:
+    """Say whether a filter can be built: the worst verdict over its parts."""
     if made.source == "none":
         return "–"
+    if made.source in _MEASURED:
+        return "measured"
     if made.family is None:
         return "no filter"
     if not made.elements:
@@ -199,7 +223,7 @@ def _parts(stage: StagePlan) -> str:
 
 def _worst_lines_table(plan: Plan) -> Table:
     """List the output lines that come closest to their limit, and where each comes from."""
-    table = _table(
+    made = table(
         *("line", "frequency", "dBc", "limit", "margin\ndB", "cause"),
         right=("dBc", "limit", "margin\ndB"),
         fixed=("line", "frequency"),
@@ -207,7 +231,7 @@ def _worst_lines_table(plan: Plan) -> Table:
     limited = [line for line in plan.output.lines if line.margin_db is not None]
     for line in sorted(limited, key=_margin)[:_WORST_LINES]:
         main = origins_text(line.origins, at_least=_LEAST_SHARE) or origins_text(line.origins)
-        table.add_row(
+        made.add_row(
             line_name(line.line),
             span(line.frequency_hz),
             decibels(line.level_dbc),
@@ -215,7 +239,7 @@ def _worst_lines_table(plan: Plan) -> Table:
             Text(decibels(line.margin_db, signed=True), style="red" if _margin(line) < 0 else ""),
             Text(printable(main)),
         )
-    return table
+    return made
 
 
 def _margin(line: OutputLine) -> float:
@@ -223,44 +247,23 @@ def _margin(line: OutputLine) -> float:
     return math.inf if line.margin_db is None else line.margin_db
 
 
-def _flags(plan: Plan, screen: Console) -> None:
-    """Show the parts that strays or the kit's range make doubtful, worst first."""
-    flagged = [(stage, part) for stage in plan.stages for part in stage.filter.elements if part.verdict != "ok"]
-    if not flagged:
-        return
-    flagged.sort(key=lambda pair: -VERDICT_RANK[pair[1].verdict])
-    table = _table("stage", "part", "value", "verdict", "reason", fixed=("part", "value", "verdict"))
-    for stage, part in flagged[:_MOST_FLAGS]:
-        table.add_row(
-            Text(printable(stage.name)),
-            part.ref,
-            quantity(part.ideal, part.unit, 3),
-            Text(part.verdict, style=_STYLES[part.verdict]),
-            Text(printable(part.reason)),
-        )
-    _section(screen, "Parts to look at", table)
-    if len(flagged) > _MOST_FLAGS:
-        screen.print(f"and {len(flagged) - _MOST_FLAGS} more in elements.csv")
-
-
 def _proposals(plan: Plan, screen: Console) -> None:
     """Show what would help each stage whose filter is doubtful, with the numbers under which `apply` takes it."""
     numbered = numbered_proposals(plan)
     if not numbered and not any(stage.filter.proposals_note for stage in plan.stages):
         return
-    screen.print()
-    screen.print(Text("What would help (each designed anew and run through the chain)", style="bold"))
+    heading(screen, "What would help (each designed anew and run through the chain)")
     shown = 0
     for i, stage in enumerate(plan.stages):
         name, every = printable(stage.name), [each for each in numbered if each.stage_index == i]
         best = [each for each in every if each.proposal.buildable][:_PROPOSALS_PER_STAGE]
         shown += len(best)
         for each in best:
-            _bullet(screen, _proposal_text(name, each), mark=f"{each.number}.")
+            bullet(screen, _proposal_text(stage, each), mark=f"{each.number}.")
         if stage.filter.proposals_note:
-            _bullet(screen, Text(f"{name}: {printable(stage.filter.proposals_note)}"))
+            bullet(screen, Text(f"{name}: {printable(stage.filter.proposals_note)}"))
         elif every and not best:
-            _bullet(screen, Text(f"{name}: nothing that was tried can be built; plan.json says what was"))
+            bullet(screen, Text(f"{name}: nothing that was tried can be built; plan.json says what was"))
     if numbered:
         more = (
             f" ({len(numbered) - shown} more, counted in the same order, in plan.json)" if len(numbered) > shown else ""
@@ -268,27 +271,33 @@ def _proposals(plan: Plan, screen: Console) -> None:
         screen.print(f"Take one with its number: harmonic-planner apply SCENARIO N{more}")
 
 
-def _proposal_text(stage_name: str, numbered: NumberedProposal) -> Text:
-    """Say one proposal with what it buys and costs."""
-    proposal = numbered.proposal
-    text = Text(
-        f"{stage_name}: {printable(proposal.change)}: {filter_name(proposal.family, proposal.order)} "
-        f"{proposal.topology}, {100 * proposal.bandwidth_hz / proposal.centre_hz:.1f} % at "
-        f"{quantity(proposal.centre_hz, 'Hz')}, loss {decibels(proposal.loss_db)} dB; worst part "
-    )
-    text.append(proposal.worst_verdict, style=_STYLES[proposal.worst_verdict])
+def _proposal_text(stage: StagePlan, numbered: NumberedProposal) -> Text:
+    """Say one proposal: the filter it is, what it buys and what it costs."""
+    proposal, now = numbered.proposal, stage.filter
+    words = [
+        f"{stage.name}: "
+        + circuit_words(proposal.family, proposal.order, proposal.topology, proposal.resonator)
+        + (f" of {proposal.kit}" if proposal.kit and proposal.kit != now.kit else ""),
+        band_words(proposal.topology, bandwidth_hz=proposal.bandwidth_hz, centre_hz=proposal.centre_hz),
+    ]
+    if now.impedance_ohm is not None and proposal.impedance_ohm != now.impedance_ohm:
+        words.append(f"{proposal.impedance_ohm:g} ohm inside")
+    text = Text(printable(f"{', '.join(words)}: loss {decibels(proposal.loss_db)} dB, "))
+    text.append("all parts " if proposal.worst_verdict == "ok" else "worst part ")
+    text.append(proposal.worst_verdict, style=STYLES[proposal.worst_verdict])
     part = printable(proposal.worst_element).partition(":")[0]
-    text.append(f" ({part})" if part else "")
+    text.append(f" ({part})" if part and proposal.worst_verdict != "ok" else "")
     text.append(f", least output margin {decibels(proposal.worst_margin_db, signed=True)} dB")
     text.append(f"; price: {printable(proposal.price)}" if proposal.price else "")
     return text
 
 
-def _filter_words(stage: StagePlan) -> str:
-    """Name a stage's filter in a heading."""
-    made = stage.filter
-    if made.family is None:
-        return "none" if made.source == "none" else "none found"
+def _filter_words(made: FilterPlan) -> str:
+    """Name a filter in a narrow column or a heading."""
+    if made.source in _MEASURED:
+        return "measured"
+    if made.family is None and made.source != "none":
+        return "none found"
     return filter_name(made.family, made.order)
 
 
@@ -296,15 +305,15 @@ def _comb_table(plan: Plan, screen: Console, columns: Sequence[tuple[str, Sequen
     """Show the levels of every line at a stage's nodes side by side, and count those too faint to matter."""
     levels = [{level.line: level.level_dbc for level in node} for _, node in columns]
     heads = [head for head, _ in columns]
-    table = _table("line", "frequency", *heads, right=("line", *heads), fixed=("frequency",))
+    made = table("line", "frequency", *heads, right=("line", *heads), fixed=("frequency",))
     every = sorted({line for node in levels for line in node})
     strong = [line for line in every if max(node.get(line, -math.inf) for node in levels) >= FAINTEST_DBC]
     for line in strong:
-        table.add_row(
+        made.add_row(
             line_name(line),
             span(line_frequency_hz(plan, line)),
             *(decibels(node[line]) if line in node else "–" for node in levels),
         )
-    screen.print(table if strong else Text("no line"))
+    screen.print(made if strong else Text("no line"))
     if len(every) > len(strong):
         screen.print(f"{len(every) - len(strong)} more lines below {FAINTEST_DBC:.0f} dBc at every one of these nodes")

@@ -3,7 +3,8 @@
 import math
 from fractions import Fraction
 
-_PREFIXES = ((1e9, "G"), (1e6, "M"), (1e3, "k"), (1.0, ""), (1e-3, "m"), (1e-6, "µ"), (1e-9, "n"), (1e-12, "p"))
+from harmonic_planner.export.values import frequency_scale, number_text, quantity
+from harmonic_planner.filters.topologies import REGISTRY
 
 
 def printable(text: str) -> str:
@@ -20,58 +21,6 @@ def printable(text: str) -> str:
         The text on one line, every such character shown as ``?``.
     """
     return "".join(character if character.isprintable() else "?" for character in text.replace("\n", " "))
-
-
-def quantity(value: float, unit: str, digits: int = 4) -> str:
-    """Write a quantity with an engineering prefix.
-
-    Parameters
-    ----------
-    value : float
-        In SI units.
-    unit : str
-        The unit's symbol.
-    digits : int
-        Significant digits.
-
-    Returns
-    -------
-    str
-        For instance ``61.2 MHz``; ``–`` for a value that is not finite.
-
-    Examples
-    --------
-    >>> quantity(61.2e6, "Hz"), quantity(0.199e-12, "F", 3)
-    ('61.2 MHz', '0.199 pF')
-    """
-    if not math.isfinite(value):
-        return "–"
-    if value == 0:
-        return f"0 {unit}"
-    smallest = 1.0 if unit == "Hz" else 1e-12
-    usable = [pair for pair in _PREFIXES if pair[0] >= smallest]
-    scale, prefix = next((pair for pair in usable if abs(value) >= pair[0]), usable[-1])
-    return f"{number_text(value / scale, digits)} {prefix}{unit}"
-
-
-def number_text(value: float, digits: int = 4) -> str:
-    """Round to significant digits, without an exponent and without trailing zeros.
-
-    Parameters
-    ----------
-    value : float
-        A finite number.
-    digits : int
-        Significant digits.
-
-    Returns
-    -------
-    str
-        For instance ``61.2``.
-    """
-    decimals = max(0, digits - 1 - math.floor(math.log10(abs(value)))) if value else 0
-    text = f"{value:.{decimals}f}"
-    return text.rstrip("0").rstrip(".") if "." in text else text
 
 
 def span(frequency_hz: tuple[float, float], digits: int = 4) -> str:
@@ -112,22 +61,6 @@ def span_of(frequency_hz: tuple[float, float], scale: float, digits: int = 4) ->
     """
     low, high = (number_text(edge / scale, digits) for edge in frequency_hz)
     return high if low == high else f"{low}–{high}"
-
-
-def frequency_scale(highest_hz: float) -> tuple[float, str]:
-    """Choose the unit of a frequency axis or a column.
-
-    Parameters
-    ----------
-    highest_hz : float
-        The highest frequency to be written [Hz].
-
-    Returns
-    -------
-    tuple
-        What to divide by [Hz] and the unit's symbol.
-    """
-    return next(((scale, f"{prefix}Hz") for scale, prefix in _PREFIXES if highest_hz >= scale), (1.0, "Hz"))
 
 
 def decibels(value: float | None, *, signed: bool = False) -> str:
@@ -176,3 +109,53 @@ def filter_name(family: str | None, order: int | None) -> str:
     if family is None or order is None:
         return "none"
     return f"{ {'butterworth': 'Butter', 'chebyshev': 'Cheb'}.get(family, family) } {order}"
+
+
+def is_one_sided(topology: str | None) -> bool:
+    """Tell a low-pass or high-pass, whose centre is its cut-off and whose bandwidth says nothing."""
+    found = REGISTRY.get(topology or "")
+    return found is not None and found.passes != "band"
+
+
+def band_words(topology: str | None, *, bandwidth_hz: float, centre_hz: float) -> str:
+    """Say where a filter passes.
+
+    Parameters
+    ----------
+    topology : str or None
+        Its circuit.
+    bandwidth_hz, centre_hz : float
+        Of a low-pass or high-pass the centre is the cut-off [Hz].
+
+    Returns
+    -------
+    str
+        For instance ``20.8 % at 219 MHz``, or ``cut-off 260 MHz``.
+    """
+    if is_one_sided(topology):
+        return f"cut-off {quantity(centre_hz, 'Hz')}"
+    return f"{100 * bandwidth_hz / centre_hz:.1f} % at {quantity(centre_hz, 'Hz')}"
+
+
+def circuit_words(family: str, order: int, topology: str | None, resonator: float | None) -> str:
+    """Name a filter's circuit.
+
+    Parameters
+    ----------
+    family : str
+    order : int
+    topology : str or None
+        None for the prototype itself.
+    resonator : float or None
+        What the topology leaves free: inductance [H] or capacitance [F].
+
+    Returns
+    -------
+    str
+        For instance ``Cheb 4 capacitive with 27 nH``.
+    """
+    words = f"{filter_name(family, order)} {topology or 'prototype'}"
+    found = REGISTRY.get(topology or "")
+    if resonator is None or found is None or found.free is None:
+        return words
+    return f"{words} with {quantity(resonator, 'H' if found.free == 'L' else 'F', 3)}"
