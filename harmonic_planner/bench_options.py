@@ -81,9 +81,7 @@ def read(carrier: str, lines: Sequence[str], design: Mapping[str, object], folde
     OptionError
         With every problem found, each naming its option, the value and what is allowed.
     """
-    given = {key: value for key, value in design.items() if value is not None and value != []}
-    if isinstance(families := given.get("families"), list):
-        given["families"] = list(dict.fromkeys(families))
+    given = {key: _as_written(key, value) for key, value in design.items() if value is not None and value != []}
     problems: list[str] = []
     carrier_hz = _checked("--carrier", carrier, span, problems)
     asked = [_checked("--line", text, line, problems) for text in lines]
@@ -147,6 +145,14 @@ def line(text: str) -> Asked:
         raise RefusedError(LINE_ALLOWED, error.reason) from None
 
 
+def _as_written(key: str, value: object) -> object:
+    """Write an option that may be repeated as the scenario's key would be: each name once, one name by itself."""
+    if not isinstance(value, list):
+        return value
+    names = list(dict.fromkeys(value))
+    return names[0] if len(names) == 1 and key != "families" else names
+
+
 def _checked(option: str, text: str, reader: Callable[[str], T], problems: list[str]) -> T | None:
     """Read one option's text; what is wrong with it goes to the problems."""
     try:
@@ -186,7 +192,7 @@ def _worded(location: Location, text: str, given: Mapping[str, Any]) -> str:
     """Write a problem with a design key as one with its option."""
     _, key, *rest = location
     value = given[str(key)]
-    shown = value[rest[0]] if rest and isinstance(value, list) else value
+    shown = value[rest[0]] if isinstance(value, list) and rest and isinstance(rest[0], int) else value
     return f"{OPTIONS[str(key)]} {value_text(shown)}: {text}"
 
 

@@ -180,6 +180,66 @@ def window(
     return 0 if does_it(found) else 3
 
 
+@app.command(epilog=_example("budget chain.toml", "budget chain.toml --measured lines.csv --out chain-budget"))
+def budget(
+    scenario: Annotated[
+        Path,
+        typer.Argument(metavar="SCENARIO", show_default=False, help="Scenario file (TOML), every filter in it given."),
+    ],
+    measured: Annotated[
+        Path | None,
+        typer.Option(
+            "--measured",
+            metavar="FILE",
+            show_default=False,
+            help="Lines measured at the output, CSV: line or frequency, and level (dBc or dBm).",
+        ),
+    ] = None,
+    out: Annotated[
+        Path | None,
+        typer.Option(
+            "--out",
+            metavar="DIR",
+            show_default=False,
+            help="Folder for the results: new, empty, or from an earlier run, which is replaced. "
+            "Default: nothing is written.",
+        ),
+    ] = None,
+) -> int:
+    """Show margins, causes and drive of a chain that exists; nothing is planned.
+
+    Exit status 0: every line within its limit. 3: one is not. With --measured also what on the bench explains best how
+    measured lines differ from computed ones.
+    """
+    from harmonic_planner.measured_lines import read_lines
+    from harmonic_planner.planning.comparison import compare
+    from harmonic_planner.planning.hardware import budget as budget_of
+    from harmonic_planner.scenario import load
+
+    loaded = load(scenario)
+    bench = None if measured is None else read_lines(measured, loaded)
+    if out is not None:
+        folder.check(out)
+    try:
+        worked = budget_of(loaded)
+        comparison = None if bench is None else compare(loaded, bench)
+    except PlannerError as fault:
+        raise PlannerError(f"{scenario}: {fault}") from fault
+
+    from harmonic_planner.report.budget import show_budget
+    from harmonic_planner.report.console import console
+    from harmonic_planner.report.files import plan_files
+
+    screen = console()
+    files = {} if out is None else plan_files(worked, comparison)
+    if out is not None:
+        folder.write(out, files)
+    show_budget(worked.plan, comparison, screen)
+    if out is not None:
+        screen.print(f"\nBudget of {scenario}; wrote {len(files)} files to {out}{os.sep}", soft_wrap=True)
+    return worked.plan.exit_status
+
+
 @app.command(epilog=_example("schema > scenario.schema.json"))
 def schema() -> int:
     """Print the JSON Schema of scenario files."""

@@ -60,7 +60,9 @@ def _read_table(table: RejectionTable, path: Path) -> MeasuredFilter:
     """Read rejection over frequency."""
     (_, frequency_hz), (_, rejection_db) = read_columns(path, (FREQUENCY_COLUMNS, _REJECTION_COLUMNS))
     _check_ascending(np.array(frequency_hz))
-    return MeasuredFilter("table", table.table, tuple(frequency_hz), tuple(rejection_db), beyond_sweep=table.beyond_sweep)
+    return MeasuredFilter(
+        "table", table.table, tuple(frequency_hz), tuple(rejection_db), beyond_sweep=table.beyond_sweep
+    )
 
 
 def _read_touchstone(table: TouchstoneTable, path: Path, impedance_ohm: float) -> MeasuredFilter:

@@ -97,7 +97,7 @@ class MeasuredFilter:
 
 @dataclass(frozen=True)
 class Isolation:
-    """What leaks past a filter, relative to its input."""
+    """What leaks past a filter, relative to its input, and from earlier carriers into a stage."""
 
     level_db: float
     """Isolation at and below 1 GHz [dB]; infinite for none."""
@@ -154,6 +154,8 @@ class Stage:
     amplifier: Amplifier | None = None
     limit_dbc: float | None = None
     design: Design = Design()
+    tap: Limits | None = None
+    """Limits of another output, tapped behind this stage."""
 
 
 @dataclass(frozen=True)
@@ -177,12 +179,34 @@ class MaskBand:
 
 
 @dataclass(frozen=True)
-class Output:
-    """What is asked of the last node."""
+class OffsetBand:
+    """From low_hz to high_hz off the carrier, on both sides, this limit replaces the general one."""
+
+    low_hz: float
+    high_hz: float
+    limit_dbc: float
+
+
+@dataclass(frozen=True)
+class Limits:
+    """What is asked of every unwanted line at one node."""
 
     limit_dbc: float | None = None
-    level_dbm: float | None = None
+    """The general limit."""
     mask: tuple[MaskBand, ...] = ()
+    offset_mask: tuple[OffsetBand, ...] = ()
+    """Where bands of either mask meet, the strictest holds."""
+    limit_dbm: float | None = None
+    """Absolute; it stands beside all others, inside the masks too."""
+    sm329_category_a: bool = False
+    """The general limit is that of Recommendation ITU-R SM.329, category A, at the carrier's power."""
+
+
+@dataclass(frozen=True)
+class Output(Limits):
+    """What is asked of the last node."""
+
+    level_dbm: float | None = None
 
 
 @dataclass(frozen=True)
@@ -223,6 +247,10 @@ class LineLevel:
 
     line: Fraction
     level_dbc: float
+
+
+LEAK_OF = "leak of "
+"""How the origin of what an earlier carrier leaks begins: ``leak of source into second doubler``."""
 
 
 @dataclass(frozen=True)
@@ -388,6 +416,8 @@ class StagePlan:
     filter: FilterPlan
     limit_dbc: float | None = None
     """The stage's own limit at its output, where it has one."""
+    limited_lines: tuple[OutputLine, ...] = ()
+    """Unwanted lines against the limits of this stage's own output or tap; empty where it has none."""
 
 
 @dataclass(frozen=True)
@@ -405,7 +435,7 @@ class AllocationPlan:
     """How many resonators all stages need together."""
 
     total: int
-    """Resonators of the planned filters; a low-pass or high-pass counts half its parts."""
+    """Resonators of the planned filters; a low-pass or high-pass counts one for every pair of its parts."""
     lower_bound: int
     """What no choice among the candidates gets below."""
     proven: bool

@@ -81,7 +81,10 @@ def _stage_defaults(place: str, stage: StageTable, design: DesignTable) -> Itera
             yield f"{place}.{name}: none"
     if "filter" not in stage.model_fields_set:
         yield f"{place}.filter = plan"
-    if isinstance(stage.filter, TouchstoneTable | RejectionTable) and "beyond_sweep" not in stage.filter.model_fields_set:
+    if (
+        isinstance(stage.filter, TouchstoneTable | RejectionTable)
+        and "beyond_sweep" not in stage.filter.model_fields_set
+    ):
         yield f"{place}.filter.beyond_sweep = {stage.filter.beyond_sweep}"
     if isinstance(stage.filter, FilterTable):
         given = stage.filter

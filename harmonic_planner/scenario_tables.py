@@ -325,8 +325,8 @@ class RejectionTable(Table):
     """A filter known by its rejection at some frequencies."""
 
     table: Annotated[str, FILE] = _need(
-        "CSV file with the columns frequency (with unit) or frequency_hz, _khz, _mhz, _ghz, and rejection (with unit) or "
-        "rejection_db, relative to the scenario's folder"
+        "CSV file with the columns frequency (with unit; or frequency_hz, _khz, _mhz, _ghz) and rejection (with unit; "
+        "or rejection_db), relative to the scenario's folder"
     )
     beyond_sweep: Annotated[BeyondSweep, Choice(get_args(BeyondSweep))] = _default("refuse", _BEYOND)
 
@@ -335,7 +335,9 @@ def _filter_tag(value: object) -> str:
     """Tell the ways to write a filter apart by the key that only one of them has."""
     if isinstance(value, dict):
         return next((tag for tag in ("touchstone", "table") if tag in value), "described")
-    return {FilterTable: "described", TouchstoneTable: "touchstone", RejectionTable: "table"}.get(type(value), "word")
+    if isinstance(value, TouchstoneTable):
+        return "touchstone"
+    return "table" if isinstance(value, RejectionTable) else "described" if isinstance(value, FilterTable) else "word"
 
 
 def _without_defaults(schema: dict[str, Any]) -> None:

@@ -2,21 +2,34 @@
 
 import math
 from fractions import Fraction
+from functools import cache
+from pathlib import Path
 
+import numpy as np
+
+from harmonic_planner.filters.topologies import design
 from harmonic_planner.model import (
+    AllocationPlan,
     ElementReport,
+    ElementVerdict,
     FilterPlan,
     LineLevel,
     Origin,
     OutputLine,
     OutputPlan,
     PhaseNoisePoint,
+    Placement,
     Plan,
     Proposal,
     Requirement,
     StagePlan,
     Window,
 )
+from harmonic_planner.parts.kits import load_kit
+from harmonic_planner.physics.prototypes import Prototype
+from harmonic_planner.planning.built import Built, Form
+from harmonic_planner.planning.jobs import Action
+from harmonic_planner.planning.plan import WorkedOut
 
 SOURCE_HZ = (19.9e6, 20.1e6)
 SWAMPED_REASON = "pad capacitance 0.3 pF is 41 % of 0.73 pF"
@@ -45,6 +58,40 @@ def requirement(line: str, required_db: float, as_built_db: float) -> Requiremen
     )
 
 
+def element(
+    ref: str,
+    placement: Placement,
+    ideal: float,
+    *bought: float,
+    verdict: ElementVerdict = "ok",
+    reason: str = "",
+    self_resonance_hz: float = 2.2e9,
+    peak_v: float = 1.0,
+    rated_v: float | None = None,
+    rms_a: float = 0.01,
+    rated_a: float | None = None,
+) -> ElementReport:
+    """A part, or two in parallel, with a stress that is nothing to it unless said."""
+    return ElementReport(
+        ref=ref,
+        kind="L" if ref.startswith("L") else "C",
+        placement=placement,
+        ideal=ideal,
+        nominal=sum(bought),
+        unit="H" if ref.startswith("L") else "F",
+        q=42.0,
+        self_resonance_hz=self_resonance_hz,
+        stray_share=0.04,
+        verdict=verdict,
+        reason=reason,
+        bought=bought,
+        peak_v=peak_v,
+        rms_a=rms_a,
+        rated_v=rated_v,
+        rated_a=rated_a,
+    )
+
+
 def tripler() -> StagePlan:
     """A stage whose filter is planned and all of whose parts are good."""
     return StagePlan(
@@ -68,6 +115,8 @@ def tripler() -> StagePlan:
             loss_db=1.25,
             return_loss_db=14.0,
             unloaded_q=55.0,
+            kit="chip-1008",
+            impedance_ohm=50.0,
             reason="least order with a window",
             requirement=(
                 requirement("1", 55.0, 60.5),
@@ -80,8 +129,8 @@ def tripler() -> StagePlan:
                 Window("chebyshev", 0.1, 3, 9.1e6, 12.5e6, 59.5e6, feasible=True),
             ),
             elements=(
-                ElementReport("L1", "L", "shunt", 25.4e-9, 27e-9, "H", 42.0, 2.2e9, 0.04, "ok", ""),
-                ElementReport("C1", "C", "shunt", 277e-12, 270e-12, "F", 300.0, math.inf, 0.01, "ok", ""),
+                element("L1", "shunt", 25.4e-9, 27e-9, rms_a=0.5, rated_a=0.6),
+                element("C1", "shunt", 277e-12, 270e-12, 4.7e-12, peak_v=5.0, rated_v=50.0, self_resonance_hz=math.inf),
             ),
             response_hz=(10e6, 40e6, 60e6, 80e6, 200e6),
             response_db=(80.0, 42.0, 1.25, 34.0, 90.0),
@@ -109,10 +158,12 @@ def doubler() -> StagePlan:
             centre_hz=120e6,
             bandwidth_hz=9.6e6,
             loss_db=2.5,
+            kit="chip-1008",
+            impedance_ohm=50.0,
             requirement=(requirement("3", 48.0, 51.0), requirement("5", 12.0, 11.5), requirement("12", 60.0, math.inf)),
             elements=(
-                ElementReport("L1", "L", "series", 1.2e-6, 1.2e-6, "H", 30.0, 2e8, 0.2, "marginal", "self-resonance"),
-                ElementReport("C1", "C", "series", 0.73e-12, 0.75e-12, "F", 90.0, 9e9, 0.41, "swamped", SWAMPED_REASON),
+                element("L1", "series", 1.2e-6, 1.2e-6, verdict="marginal", reason="self-resonance"),
+                element("C1", "series", 0.73e-12, 0.75e-12, verdict="swamped", reason=SWAMPED_REASON),
             ),
             proposals=(
                 Proposal(
@@ -128,6 +179,8 @@ def doubler() -> StagePlan:
                     worst_margin_db=3.4,
                     loss_db=1.75,
                     buildable=True,
+                    kit="chip-1008",
+                    price="1 resonator more",
                 ),
             ),
             response_hz=(5e6, 60e6, 120e6, 240e6, 600e6),
@@ -194,4 +247,48 @@ def example_plan() -> Plan:
             phase_noise=(PhaseNoisePoint(1e3, -134.0),),
         ),
         stages=(tripler(), doubler(), buffer_stage()),
+        allocation=AllocationPlan(total=7, lower_bound=6, proven=False, nodes=41),
     )
+
+
+def built(
+    prototype: Prototype,
+    form: Form,
+    *,
+    centre_hz: float,
+    bandwidth: float,
+    parts: tuple[ElementReport, ...] = (),
+    rejection_db: tuple[float, ...] = (),
+) -> Built:
+    """A circuit whose ideal values are bought as they are; its verdicts and rejections are written by hand."""
+    circuit = design(
+        form.topology,
+        prototype,
+        centre_hz=centre_hz,
+        bandwidth=bandwidth,
+        impedance_ohm=form.impedance_ohm,
+        resonator=form.resonator,
+    )
+    rejections = np.array([0.0, *rejection_db])
+    return Built(
+        prototype=prototype,
+        form=form,
+        centre_hz=centre_hz,
+        bandwidth=bandwidth,
+        ideal=circuit,
+        nominal=circuit,
+        circuit=circuit,
+        parts=tuple((each.value,) for each in circuit.elements),
+        action=Action(1.5, 1.25, rejections, rejections),
+        midband_db=1.25,
+        elements=parts,
+        short_db=0.5,
+    )
+
+
+@cache
+def example_worked() -> WorkedOut:
+    """The plan with a circuit for its first stage; no simulator looks at the others."""
+    form = Form("ladder-shunt", load_kit("chip-1008", Path()), 50.0)
+    circuit = built(Prototype("chebyshev", 3, 0.1), form, centre_hz=59.5e6, bandwidth=0.2)
+    return WorkedOut(example_plan(), (circuit, None, None))

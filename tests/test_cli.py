@@ -16,7 +16,7 @@ import harmonic_planner
 from harmonic_planner import cli
 from harmonic_planner.model import PlannerError
 
-from plan_fixture import example_plan
+from plan_fixture import example_worked
 
 ROOT = Path(__file__).parents[1]
 
@@ -33,7 +33,7 @@ def quick(monkeypatch) -> None:
     """Planning replaced by a plan written by hand: for tests of what happens around it."""
     import harmonic_planner.planning.plan as planning
 
-    monkeypatch.setattr(planning, "make_plan", lambda _scenario: example_plan())
+    monkeypatch.setattr(planning, "work_out", lambda _scenario: example_worked())
 
 
 @pytest.fixture
@@ -96,10 +96,31 @@ def test_plan_writes_what_plan_json_lists_and_the_same_bytes_again(place):
     contents = []
     for _ in range(2):
         assert cli.main(["plan", "good.toml", "--out", "out"]) == 3
-        contents.append({path.name: path.read_bytes() for path in (place / "out").iterdir()})
+        contents.append(contents_of(place / "out"))
     assert contents[0] == contents[1]
-    assert sorted(contents[0]) == json.loads(contents[0]["plan.json"])["files"]
+    content = json.loads(contents[0]["plan.json"])
+    assert sorted(contents[0]) == content["files"]
     assert {"lines.csv", "requirements.csv", "elements.csv"} < set(contents[0])
+    made = content["stages"][0]["filter"]
+    assert (made["netlist"], made["touchstone"]) == ("filters/01_first_tripler.cir", "filters/01_first_tripler.s2p")
+    assert {made["netlist"], made["touchstone"], "filters/01_first_tripler_bench.cir"} < set(contents[0])
+    assert content["stages"][1]["filter"]["netlist"] is None
+
+
+@pytest.mark.usefixtures("quick")
+def test_a_file_of_the_users_among_the_filters_is_refused_and_left_alone(place, capsys):
+    (place / "good.toml").write_text(GOOD)
+    assert cli.main(["plan", "good.toml", "--out", "out"]) == 3
+    capsys.readouterr()
+    (place / "out" / "filters" / "measured.s2p").write_text("mine")
+    before = snapshot(place)
+    assert "holds filters/measured.s2p" in refused(capsys, ["plan", "good.toml", "--out", "out"])
+    assert snapshot(place) == before
+
+
+def contents_of(folder: Path) -> dict[str, bytes]:
+    """Every file below a folder, by its name relative to it."""
+    return {path.relative_to(folder).as_posix(): path.read_bytes() for path in folder.rglob("*") if path.is_file()}
 
 
 # ------------------------------------------------------------------------------------ stopped and broken runs
@@ -118,7 +139,7 @@ def test_a_signal_stops_the_run_and_restores_the_folder(number, status, moment, 
     def stopped_plan(_scenario):
         if moment == "planning":
             os.kill(os.getpid(), number)
-        return example_plan()
+        return example_worked()
 
     def stopped_rename(self, target):
         moved = rename(self, target)
@@ -126,7 +147,7 @@ def test_a_signal_stops_the_run_and_restores_the_folder(number, status, moment, 
             os.kill(os.getpid(), number)
         return moved
 
-    monkeypatch.setattr(planning, "make_plan", stopped_plan)
+    monkeypatch.setattr(planning, "work_out", stopped_plan)
     monkeypatch.setattr(Path, "rename", stopped_rename)
     handlers = [signal.getsignal(each) for each in (signal.SIGINT, signal.SIGTERM)]
     message = refused(capsys, ["plan", "good.toml", "--out", "out"], status=status)
@@ -145,7 +166,7 @@ def test_the_process_itself_ends_with_the_status_of_its_signal(number, status, p
         def slow(_scenario):
             print("planning", flush=True)
             time.sleep(600)
-        planning.make_plan = slow
+        planning.work_out = slow
         sys.exit(main(["plan", "good.toml"]))
     """)
     process = subprocess.Popen(
@@ -171,7 +192,7 @@ def break_planning(monkeypatch, fault: BaseException) -> None:
     def broken(_scenario):
         raise fault
 
-    monkeypatch.setattr(planning, "make_plan", broken)
+    monkeypatch.setattr(planning, "work_out", broken)
 
 
 def test_an_unexpected_fault_is_status_1_in_one_line_that_names_it(place, monkeypatch, capsys):
@@ -309,7 +330,7 @@ def test_the_package_carries_the_scenarios_folder():
 # ------------------------------------------------------------------------------------------------------- help
 
 
-@pytest.mark.parametrize("command", ["", "plan", "lines", "schema", "new", "apply"])
+@pytest.mark.parametrize("command", ["", "plan", "lines", "window", "schema", "new", "apply"])
 def test_help_shows_an_example_of_that_command(command, capsys):
     assert cli.main([*command.split(), "--help"]) == 0
     text = capsys.readouterr().out

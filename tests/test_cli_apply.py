@@ -8,6 +8,7 @@ import pytest
 from cli_helpers import GOOD, refused, snapshot, swap
 
 from harmonic_planner import cli
+from harmonic_planner.planning.plan import WorkedOut
 from harmonic_planner.scenario import load
 
 from plan_fixture import doubler, example_plan
@@ -22,7 +23,8 @@ def planned(monkeypatch, *proposals) -> None:
 
     first, second, *_ = example_plan().stages
     second = replace(second, filter=replace(second.filter, proposals=proposals))
-    monkeypatch.setattr(planning, "make_plan", lambda _scenario: replace(example_plan(), stages=(first, second)))
+    worked = WorkedOut(replace(example_plan(), stages=(first, second)), (None, None))
+    monkeypatch.setattr(planning, "work_out", lambda _scenario: worked)
 
 
 @pytest.fixture
@@ -101,7 +103,7 @@ def test_a_plan_without_proposals(place, monkeypatch, capsys):
 def test_a_file_that_exists_is_refused_before_anything_is_planned(out, place, monkeypatch, capsys):
     import harmonic_planner.planning.plan as planning
 
-    monkeypatch.setattr(planning, "make_plan", lambda _scenario: pytest.fail("planned"))
+    monkeypatch.setattr(planning, "work_out", lambda _scenario: pytest.fail("planned"))
     for name in ("good-1.toml", "there.toml"):
         (place / name).write_text("mine")
     before = snapshot(place)

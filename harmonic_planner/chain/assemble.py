@@ -2,13 +2,18 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
+from functools import cached_property
 
 import numpy as np
 from numpy.typing import NDArray
 
 from harmonic_planner.chain.allowances import Allowance, allowance
-from harmonic_planner.chain.lines import LineGrid, grid_for, output_limits_dbc
+from harmonic_planner.chain.leakage import Leak, carrier_leaks
+from harmonic_planner.chain.levels import CarrierLevels, lossless_levels
+from harmonic_planner.chain.limits import limits_dbc
+from harmonic_planner.chain.lines import LineGrid, grid_for
 from harmonic_planner.model import Phases, PlannerError, Scenario
 from harmonic_planner.physics.amplifiers import amplifier_lines
 from harmonic_planner.physics.conversion import check_device, conversion_matrix, device_lines
@@ -40,6 +45,10 @@ class StageArrays:
         The same as factors of the quantity that is added (amplitude or power).
     limit : (lines,) float
         Limit at this stage's output, same quantity; infinite where nothing is asked.
+    leaks : tuple of Leak
+        Earlier carriers that reach the node behind the stage past everything between.
+    leak : (lines,) float
+        Their sum, same quantity.
     """
 
     carrier: int
@@ -52,6 +61,13 @@ class StageArrays:
     mismatch: float
     termination: float
     limit: Array
+    leaks: tuple[Leak, ...]
+    leak: Array
+
+    @cached_property
+    def added(self) -> Array:
+        """Lines that appear behind the filter, of the amplifier and by leakage, (lines,)."""
+        return self.amplifier + self.leak
 
 
 @dataclass(frozen=True)
@@ -103,6 +119,11 @@ def assemble(scenario: Scenario, *, phases: Phases) -> ChainArrays:
     ------
     PlannerError
         Where a device cannot be used; the message names the stage.
+
+    Notes
+    -----
+    What depends on carrier levels, leakage of earlier carriers and limits in dBm, is that of filters without loss;
+    `at_levels` puts it right once the filters are known.
     """
     grid = grid_for(scenario)
     exponent = 1 if phases == "worst-case" else 2
@@ -112,7 +133,6 @@ def assemble(scenario: Scenario, *, phases: Phases) -> ChainArrays:
     for line, level_dbc in scenario.source.lines_dbc.items():
         source[grid.index(line)] = 10 ** (level_dbc * exponent / 20)
 
-    last = len(scenario.stages) - 1
     stages = []
     for i, stage in enumerate(scenario.stages):
         carrier_in = grid.index(scenario.carrier(i - 1)) + 1
@@ -140,10 +160,6 @@ def assemble(scenario: Scenario, *, phases: Phases) -> ChainArrays:
             amplifier = amplifier_lines(stage.amplifier, carrier_index=carrier + 1, count=grid.count) ** exponent
             amplifier[carrier] = 0.0
         allowed = allowance(scenario, i, phases)
-        limit_dbc = np.full(grid.count, np.inf if stage.limit_dbc is None else stage.limit_dbc)
-        if i == last:
-            limit_dbc = np.minimum(limit_dbc, output_limits_dbc(scenario.output, low_hz, high_hz))
-        limit_dbc[carrier] = np.inf
         stages.append(
             StageArrays(
                 carrier=carrier,
@@ -155,7 +171,48 @@ def assemble(scenario: Scenario, *, phases: Phases) -> ChainArrays:
                 allowance=allowed,
                 mismatch=10 ** (allowed.mismatch_db * exponent / 20),
                 termination=10 ** (allowed.termination_db * exponent / 20),
-                limit=10 ** (limit_dbc * exponent / 20),
+                limit=np.full(grid.count, np.inf),
+                leaks=(),
+                leak=np.zeros(grid.count),
             )
         )
-    return ChainArrays(grid, phases, exponent, source, low_hz, high_hz, tuple(stages))
+    chain = ChainArrays(grid, phases, exponent, source, low_hz, high_hz, tuple(stages))
+    return at_levels(scenario, chain, lossless_levels(scenario))
+
+
+def at_levels(scenario: Scenario, chain: ChainArrays, levels: Sequence[CarrierLevels]) -> ChainArrays:
+    """Return the chain with leakage and limits as they are at these carrier levels.
+
+    Parameters
+    ----------
+    scenario : Scenario
+    chain : ChainArrays
+        The same scenario; the limits that it has are replaced by those the user gave.
+    levels : sequence of CarrierLevels
+        Of every stage, over the same points of the span.
+
+    Returns
+    -------
+    ChainArrays
+    """
+    last = len(scenario.stages) - 1
+    leaks = carrier_leaks(scenario, chain.grid, chain.high_hz, levels)
+    stages = []
+    for i, (stage, arrays) in enumerate(zip(scenario.stages, chain.stages, strict=True)):
+        limit_dbc = np.full(chain.grid.count, np.inf if stage.limit_dbc is None else stage.limit_dbc)
+        for limits in (stage.tap, scenario.output if i == last else None):
+            if limits is not None:
+                asked = limits_dbc(
+                    limits,
+                    low_hz=chain.low_hz,
+                    high_hz=chain.high_hz,
+                    carrier_hz=(float(chain.low_hz[arrays.carrier]), float(chain.high_hz[arrays.carrier])),
+                    carrier_dbm=float(np.max(levels[i].output_dbm)),
+                )
+                limit_dbc = np.minimum(limit_dbc, asked)
+        limit_dbc[arrays.carrier] = np.inf
+        leak = np.zeros(chain.grid.count)
+        for x in leaks[i]:
+            leak[x.line] += chain.from_db(x.level_dbc)
+        stages.append(replace(arrays, limit=chain.from_db(limit_dbc), leaks=leaks[i], leak=leak))
+    return replace(chain, stages=tuple(stages))

@@ -6,7 +6,8 @@ linear figure for everything beside them. A given line that the waveform does no
 perfect push-push, say) is added at a random phase.
 
 A filter turns every line by a random phase of its own, unless its transmissions are complex and bring their phases
-along; a stage without a filter leaves phases as the waveform made them. Lines an amplifier adds come at random phases.
+along; a stage without a filter leaves phases as the waveform made them. Lines that an amplifier or leakage adds come at
+random phases.
 """
 
 from __future__ import annotations
@@ -43,8 +44,8 @@ class ExactStage:
         Given lines that the waveform does not have.
     filtered : bool
         Whether a filter turns the phases.
-    amplifier : (lines,) float
-        Lines the amplifier adds.
+    added : (lines,) float
+        Lines that the amplifier and leakage add.
     saturates : bool
         Whether the amplifier's saturation is known.
     am_to_pm_deg_per_db : float
@@ -59,7 +60,7 @@ class ExactStage:
     scale: Array
     unmodelled: Array
     filtered: bool
-    amplifier: Array
+    added: Array
     saturates: bool
     am_to_pm_deg_per_db: float
     points: int
@@ -91,8 +92,8 @@ class ExactStage:
                 am_to_pm_deg_per_db=self.am_to_pm_deg_per_db,
             )
             comb = carrier_at_one(comb, self.carrier)
-        if self.amplifier.any():
-            comb += self.amplifier * random_phases(rng, comb.shape)
+        if self.added.any():
+            comb += self.added * random_phases(rng, comb.shape)
         return comb
 
     def made(self, entering: Complex, rng: np.random.Generator) -> Complex:
@@ -138,7 +139,7 @@ def exact_stages(
                 scale=scale,
                 unmodelled=unmodelled,
                 filtered=stage.filter != "none",
-                amplifier=arrays.amplifier ** (1 / chain.exponent),
+                added=arrays.added ** (1 / chain.exponent),
                 saturates=stage.amplifier is not None and stage.amplifier.saturation_dbm is not None,
                 am_to_pm_deg_per_db=turned if stage.amplifier is not None else 0.0,
                 points=points,

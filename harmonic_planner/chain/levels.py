@@ -47,3 +47,8 @@ def carrier_levels(scenario: Scenario, filter_loss_db: Sequence[NDArray[np.float
         level = behind if amplifier is None else np.asarray(output_dbm(amplifier, behind))
         levels.append(CarrierLevels(drive, at_filter, behind, level))
     return tuple(levels)
+
+
+def lossless_levels(scenario: Scenario) -> tuple[CarrierLevels, ...]:
+    """Return the carrier levels with filters that lose nothing, each (1,) [dBm]: what is known before any is chosen."""
+    return carrier_levels(scenario, [np.zeros(1)] * len(scenario.stages))

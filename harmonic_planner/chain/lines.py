@@ -1,4 +1,4 @@
-"""The grid of spectral lines that a chain is computed on, and the limits asked of them."""
+"""The grid of spectral lines that a chain is computed on."""
 
 from __future__ import annotations
 
@@ -9,7 +9,7 @@ from fractions import Fraction
 import numpy as np
 from numpy.typing import NDArray
 
-from harmonic_planner.model import Output, Scenario
+from harmonic_planner.model import Scenario
 
 LINES_PER_FACTOR = 4
 """Lines are kept up to this many times the chain's whole factor."""
@@ -58,40 +58,3 @@ def grid_for(scenario: Scenario) -> LineGrid:
     highest_source = max(scenario.source.lines_dbc, default=Fraction(1))
     top = max(LINES_PER_FACTOR * scenario.total, 2 * math.ceil(highest_source))
     return LineGrid(q, top * q)
-
-
-def output_limits_dbc(output: Output, low_hz: NDArray[np.float64], high_hz: NDArray[np.float64]) -> NDArray[np.float64]:
-    """Return the limit of each line, the strictest over its span.
-
-    Parameters
-    ----------
-    output : Output
-        General limit and mask; inside a mask's band the mask replaces the limit.
-    low_hz, high_hz : (lines,) float
-        Span of each line [Hz].
-
-    Returns
-    -------
-    (lines,) float
-        Limit [dBc]; infinite where nothing is asked.
-    """
-    limits = np.full(low_hz.shape, np.inf)
-    for i, (low, high) in enumerate(zip(low_hz, high_hz, strict=True)):
-        bands = sorted((b for b in output.mask if b.low_hz <= high and b.high_hz >= low), key=lambda b: b.low_hz)
-        asked = [b.limit_dbc for b in bands]
-        if output.limit_dbc is not None and not _covered(low, high, [(b.low_hz, b.high_hz) for b in bands]):
-            asked.append(output.limit_dbc)
-        limits[i] = min(asked, default=np.inf)
-    return limits
-
-
-def _covered(low: float, high: float, bands: list[tuple[float, float]]) -> bool:
-    """Tell whether `bands`, ascending, cover [low, high] without a gap."""
-    reached = low
-    for band_low, band_high in bands:
-        if band_low > reached:
-            return False
-        reached = max(reached, band_high)
-        if reached >= high:
-            return True
-    return False

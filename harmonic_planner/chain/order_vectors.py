@@ -57,7 +57,7 @@ class Completion:
     last : (candidates, limits) float
         Transmission over limit of the last stage's candidates.
     added : (limits,) float
-        What the last amplifier adds, over limit.
+        What is added behind the last filter, over limit.
     """
 
     constant: Array

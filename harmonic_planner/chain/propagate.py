@@ -7,14 +7,15 @@ relative to its carrier,
     v_i = D_i (F_i + M_i v_(i−1)) + A_i
 
 D the filter's transmissions relative to its carrier, F the device's lines, M its conversion matrix, A the amplifier's
-lines; every entry is non-negative, so the output is monotone in every transmission. `allowed` computes the same with
-every path's mismatch and termination at its worst.
+lines and earlier carriers that leak to this node; every entry is non-negative, so the output is monotone in every
+transmission. `allowed` computes the same with every path's mismatch and termination at its worst.
 """
 
 from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from typing import Literal
 
 import numpy as np
 from numpy.typing import NDArray
@@ -39,14 +40,17 @@ class Birth:
     Attributes
     ----------
     stage : int
-        0-based; −1 is the source.
-    part : {"source", "device", "amplifier"}
+        0-based; −1 is the source. Of a leak, the stage whose carrier it is.
+    part : {"source", "device", "amplifier", "leak"}
     paths : (lines out, lines born) float
+    behind : int
+        Where it joins the chain: behind this stage's filter. Of a leak that is later than its own stage.
     """
 
     stage: int
-    part: str
+    part: Literal["source", "device", "amplifier", "leak"]
     paths: Array
+    behind: int
 
 
 def propagate(chain: ChainArrays, transmissions: Sequence[Array], *, allowed: bool = False) -> tuple[Comb, ...]:
@@ -72,7 +76,7 @@ def propagate(chain: ChainArrays, transmissions: Sequence[Array], *, allowed: bo
         gain_device, gain_filter = _gains(stage, allowed)
         made = gain_device * (stage.device + v @ stage.conversion.T)
         filtered = gain_filter * d * made
-        leaving = filtered + stage.amplifier
+        leaving = filtered + stage.added
         combs.append(Comb(v, made, filtered, leaving))
         v = leaving
     return tuple(combs)
@@ -96,18 +100,35 @@ def path_gains(
     return gains
 
 
-def births(chain: ChainArrays, transmissions: Sequence[Array], *, to: int | None = None) -> tuple[Birth, ...]:
-    """Return every birth place with its contribution to each line at stage `to`'s output (the last), nominal."""
+def births(
+    chain: ChainArrays, transmissions: Sequence[Array], *, to: int | None = None, allowed: bool = False
+) -> tuple[Birth, ...]:
+    """Return every birth place with its contribution to each line at stage `to`'s output, the last unless given.
+
+    Parameters
+    ----------
+    chain : ChainArrays
+    transmissions : sequence of (lines,) float
+    to : int, optional
+    allowed : bool
+        Count mismatch and termination at their worst.
+    """
     last = len(chain.stages) - 1 if to is None else to
     gains: Array = np.eye(chain.grid.count)
     found = []
     for i in range(last, -1, -1):
         stage = chain.stages[i]
+        gain_device, gain_filter = _gains(stage, allowed)
+        through = gain_device * gain_filter * transmissions[i]
         if stage.amplifier.any():
-            found.append(Birth(i, "amplifier", gains * stage.amplifier))
-        found.append(Birth(i, "device", gains * (transmissions[i] * stage.device)))
-        gains = (gains * transmissions[i]) @ stage.conversion
-    found.append(Birth(-1, "source", gains * chain.source))
+            found.append(Birth(i, "amplifier", gains * stage.amplifier, i))
+        for leak in stage.leaks:
+            carrier = np.zeros(chain.grid.count)
+            carrier[leak.line] = chain.from_db(leak.level_dbc)
+            found.append(Birth(leak.origin, "leak", gains * carrier, i))
+        found.append(Birth(i, "device", gains * (through * stage.device), i))
+        gains = (gains * through) @ stage.conversion
+    found.append(Birth(-1, "source", gains * chain.source, -1))
     return tuple(found)
 
 

@@ -107,7 +107,7 @@ def reduced(
         found.append(
             ReducedStage(
                 made=(through * (stage.device + stage.conversion @ held))[kept],
-                added=stage.amplifier[kept],
+                added=stage.added[kept],
                 convert=through * stage.conversion[np.ix_(kept, before)],
                 negligible=allowed / np.maximum(most[i][kept], 1e-300),
                 limited=limited,

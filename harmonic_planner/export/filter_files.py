@@ -104,9 +104,7 @@ def filter_files(
     low, high = sweep_hz if present_hz is None else present_hz
     whole_hz = (min(sweep_hz[0], low / BEYOND_PRESENT), max(sweep_hz[1], high * BEYOND_PRESENT))
     points = max(LEAST_POINTS, math.ceil(math.log(whole_hz[1] / whole_hz[0]) / WIDEST_STEP) + 1)
-    frequency = frequencies_hz(
-        carrier_hz, lines_hz.values(), passband_hz=passband_hz, sweep_hz=whole_hz, points=points
-    )
+    frequency = frequencies_hz(carrier_hz, lines_hz.values(), passband_hz=passband_hz, sweep_hz=whole_hz, points=points)
     forward, backward = (sweep_built(c, frequency, kit=kit) for c in (circuit, circuit.reversed()))
     comments = (
         (f"Filter {stem}", title),

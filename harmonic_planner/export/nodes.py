@@ -3,7 +3,7 @@
 from collections.abc import Iterable, Iterator, Sequence
 from fractions import Fraction
 
-from harmonic_planner.model import LineLevel, Origin, Plan
+from harmonic_planner.model import LEAK_OF, LineLevel, Origin, Plan
 
 
 def line_frequency_hz(plan: Plan, line: Fraction) -> tuple[float, float]:
@@ -67,8 +67,14 @@ def origins_text(origins: Iterable[Origin], *, at_least: float = 0.0) -> str:
         born = (origin.stage, origin.line)
         shares[born] = shares.get(born, 0.0) + origin.share
     return "; ".join(
-        (f"line {line} of the source" if stage == "source" else f"line {line} left by {stage}")
-        + f" ({100 * share:.0f} %)"
+        f"{_born(stage, line)} ({100 * share:.0f} %)"
         for (stage, line), share in sorted(shares.items(), key=lambda item: -item[1])
         if share >= at_least
     )
+
+
+def _born(stage: str, line: Fraction) -> str:
+    """Say where a line was born."""
+    if stage == "source":
+        return f"line {line} of the source"
+    return f"line {line}, {stage}" if stage.startswith(LEAK_OF) else f"line {line} left by {stage}"

@@ -11,7 +11,7 @@ from typing import Any
 from harmonic_planner.model import Plan
 
 _WIDTH = 120
-_RECORD_WIDTH = 500
+_RECORD_WIDTH = 800
 
 
 def plain(value: object) -> Any:

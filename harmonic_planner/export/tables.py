@@ -7,7 +7,8 @@ from fractions import Fraction
 import pandas as pd
 
 from harmonic_planner.export.nodes import line_frequency_hz, nodes, origins_text
-from harmonic_planner.model import Plan
+from harmonic_planner.export.values import to_buy
+from harmonic_planner.model import ElementReport, Plan
 
 Cell = str | float | int | bool | Fraction | None
 
@@ -129,46 +130,65 @@ def elements_csv(plan: Plan) -> str:
     Returns
     -------
     str
-        CSV, one row per part: values in `unit` (H or F), strays' share as a fraction, the verdict and its reason.
+        CSV, one row per element: its value by design, with strays absorbed, and as bought, in `unit` (H or F); two parts
+        in parallel as text, ``10 pF + 2.2 pF``, and each by itself; strays' share as a fraction; what it bears at the
+        carrier and may bear [V peak, A rms]; the verdict and its reason.
     """
     columns = (
         "stage_number",
         "stage",
         "topology",
+        "kit",
         "ref",
         "kind",
         "placement",
         "ideal",
         "nominal",
+        "bought",
+        "bought_1",
+        "bought_2",
         "unit",
         "q",
         "self_resonance_hz",
         "stray_share",
+        "peak_v",
+        "rated_v",
+        "rms_a",
+        "rated_a",
         "verdict",
         "reason",
     )
     rows: list[dict[str, Cell]] = []
     for number, stage in enumerate(plan.stages, start=1):
-        rows += [
-            {
-                "stage_number": number,
-                "stage": stage.name,
-                "topology": stage.filter.topology,
-                "ref": part.ref,
-                "kind": part.kind,
-                "placement": part.placement,
-                "ideal": part.ideal,
-                "nominal": part.nominal,
-                "unit": part.unit,
-                "q": part.q,
-                "self_resonance_hz": part.self_resonance_hz,
-                "stray_share": part.stray_share,
-                "verdict": part.verdict,
-                "reason": part.reason,
-            }
-            for part in stage.filter.elements
-        ]
+        made = stage.filter
+        own: dict[str, Cell] = {"stage_number": number, "stage": stage.name, "topology": made.topology, "kit": made.kit}
+        rows += [own | _element_cells(part) for part in made.elements]
     return _csv(columns, rows)
+
+
+def _element_cells(part: ElementReport) -> dict[str, Cell]:
+    """Return the cells of one element; an element is one part or two."""
+    first, second = (*part.bought, None, None)[:2]
+    return {
+        "ref": part.ref,
+        "kind": part.kind,
+        "placement": part.placement,
+        "ideal": part.ideal,
+        "nominal": part.nominal,
+        "bought": to_buy(part.bought, part.unit),
+        "bought_1": first,
+        "bought_2": second,
+        "unit": part.unit,
+        "q": part.q,
+        "self_resonance_hz": part.self_resonance_hz,
+        "stray_share": part.stray_share,
+        "peak_v": part.peak_v,
+        "rated_v": part.rated_v,
+        "rms_a": part.rms_a,
+        "rated_a": part.rated_a,
+        "verdict": part.verdict,
+        "reason": part.reason,
+    }
 
 
 def _csv(columns: Sequence[str], rows: Sequence[Mapping[str, Cell]]) -> str:

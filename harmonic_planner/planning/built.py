@@ -84,8 +84,8 @@ class Built:
 
     @property
     def resonators(self) -> int:
-        """Order of a bandpass; a low-pass or high-pass has half as many parts, two to a resonator."""
-        return (self.prototype.order + 1) // 2 if self.one_sided else self.prototype.order
+        """Order of a bandpass; a low-pass or high-pass counts one for every pair of its parts."""
+        return max(self.prototype.order // 2, 1) if self.one_sided else self.prototype.order
 
     @property
     def topology(self) -> str:

@@ -9,7 +9,7 @@ import numpy as np
 
 from harmonic_planner.chain.assemble import Array, ChainArrays
 from harmonic_planner.chain.propagate import Birth, Comb, births, propagate
-from harmonic_planner.model import Origin, OutputLine, Scenario
+from harmonic_planner.model import LEAK_OF, Origin, OutputLine, Scenario
 
 FAINTEST_DBC = -200.0
 """Lines below this are left out of what people read."""
@@ -78,8 +78,10 @@ def output_lines(
     transmissions: Sequence[Array],
     result: Run,
     other_margin_db: Array,
+    *,
+    to: int | None = None,
 ) -> tuple[OutputLine, ...]:
-    """Return every unwanted line at the output with its margin and what caused it.
+    """Return every unwanted line at the output, or behind another stage, with its margin and what caused it.
 
     Parameters
     ----------
@@ -89,9 +91,11 @@ def output_lines(
     result : Run
         Of the same transmissions.
     other_margin_db : (lines,) float
-        Margins at the output under the other phase rule.
+        Margins there under the other phase rule.
+    to : int, optional
+        Stage behind which to look, the last unless given.
     """
-    last = len(chain.stages) - 1
+    last = len(chain.stages) - 1 if to is None else to
     leaving = np.atleast_2d(result.combs[last].leaving)
     worst_point = leaving.argmax(axis=0)
     wanted = [
@@ -102,7 +106,7 @@ def output_lines(
     origins = {}
     for point in sorted({int(worst_point[k]) for k in wanted}):
         there = [np.atleast_2d(t)[min(point, np.atleast_2d(t).shape[0] - 1)] for t in transmissions]
-        found = births(chain, there)
+        found = births(chain, there, to=last)
         for k in wanted:
             if worst_point[k] == point:
                 parts = [
@@ -134,8 +138,9 @@ def output_lines(
 
 
 def _birthplace(scenario: Scenario, birth: Birth) -> str:
-    """Name where lines are born: the source, a stage's device, or its amplifier."""
-    if birth.stage < 0:
-        return "source"
-    name = scenario.stages[birth.stage].name
-    return f"{name} (amplifier)" if birth.part == "amplifier" else name
+    """Name where lines are born: the source, a stage's device, its amplifier, or what leaks and where to."""
+    names = [stage.name for stage in scenario.stages]
+    place = "source" if birth.stage < 0 else names[birth.stage]
+    if birth.part == "leak":
+        return f"{LEAK_OF}{place} into {(*names, 'the output')[birth.behind + 1]}"
+    return f"{place} (amplifier)" if birth.part == "amplifier" else place

@@ -30,6 +30,15 @@ def budget(scenario: Scenario) -> WorkedOut:
     PlannerError
         Where a stage's filter is still to be planned, or something cannot be used.
     """
+    refuse_unplanned(scenario)
+    worked = work_out(asking_nothing(scenario))
+    said = tuple(text for text in worked.plan.assumptions if not text.split(" ")[0].endswith(_MARGIN))
+    asked = f"margin: limits are asked to hold with {ASKED_DB:g} dB; design.margin is for plans and left aside"
+    return replace(worked, plan=replace(worked.plan, assumptions=(*said, asked), allocation=None))
+
+
+def refuse_unplanned(scenario: Scenario) -> None:
+    """Raise PlannerError, naming the stages, where a filter is still to be planned."""
     unplanned = [
         f'stage[{i}].filter (stage "{s.name}")' for i, s in enumerate(scenario.stages, 1) if s.filter == "plan"
     ]
@@ -38,10 +47,6 @@ def budget(scenario: Scenario) -> WorkedOut:
             f'{", ".join(unplanned)} = "plan": a budget plans nothing; name the filter that is there, as '
             '{ touchstone = "x.s2p" }, { table = "x.csv" } or { family, order, centre, bandwidth }, or "none"'
         )
-    worked = work_out(asking_nothing(scenario))
-    said = tuple(text for text in worked.plan.assumptions if not text.split(" ")[0].endswith(_MARGIN))
-    asked = f"margin: limits are asked to hold with {ASKED_DB:g} dB; design.margin is for plans and left aside"
-    return replace(worked, plan=replace(worked.plan, assumptions=(*said, asked), allocation=None))
 
 
 def asking_nothing(scenario: Scenario) -> Scenario:

@@ -3,9 +3,9 @@
 Notes
 -----
 Between its frequencies attenuation is interpolated in dB over the logarithm of frequency: skirts are all but straight
-there. Of the Touchstone files that this program writes, whose frequencies are 0.4 % apart at most, rejections read so are
-within 0.03 dB of the circuit's own and output margins too (regression, unconfirmed: the shipped scenarios; at 1 % it was
-0.17 dB beside the notches of strays). A coarse table is as good as its points.
+there. Read so from the Touchstone files that this program writes, whose frequencies are 0.4 % apart at most, rejections
+and output margins are within 0.03 dB of the circuit's own (regression, unconfirmed: the shipped scenarios; at 1 % it
+was 0.17 dB, beside the notches of strays). A coarse table is as good as its points.
 """
 
 from __future__ import annotations
@@ -70,7 +70,7 @@ def measured(job: Job, description: MeasuredFilter) -> StageFilter:
 
 
 def interpolated(description: MeasuredFilter, carrier_hz: tuple[float, float]) -> Attenuation:
-    """Return attenuation over frequency; outside the filter's frequencies that of the carrier at its best, no rejection.
+    """Return attenuation over frequency; outside the filter's frequencies no rejection, as of the carrier at its best.
 
     Parameters
     ----------
@@ -130,21 +130,21 @@ def refuse_beyond(chain: ChainArrays, jobs: Sequence[Job], transmissions: Sequen
         if not unknown.any():
             continue
         worst = _largest_share(chain, most, i, made[i] * unknown)
-        sweep = _mhz((description.frequency_hz[0], description.frequency_hz[-1]))
         share_db = float(chain.to_db(worst.share))
+        sweep = _mhz((description.frequency_hz[0], description.frequency_hz[-1]))
         if description.beyond_sweep == "refuse" and share_db > NEGLIGIBLE_DB:
-            line = chain.grid.line(worst.line)
+            span = _mhz((job.low_hz[worst.line], job.high_hz[worst.line]))
             raise PlannerError(
-                f"{_key(job, description)}: line {line}, {_mhz((job.low_hz[worst.line], job.high_hz[worst.line]))}, lies "
-                f"outside its frequencies, {sweep}, and may matter: let through it comes to {share_db:+.1f} dB of the "
-                f'limit of line {chain.grid.line(worst.at)}; measure further, or set beyond_sweep = "no-rejection"{_stage(job)}'
+                f"{_key(job, description)}: line {chain.grid.line(worst.line)}, {span}, lies outside its frequencies, "
+                f"{sweep}, and may matter: let through it comes to {share_db:+.1f} dB of the limit of line "
+                f'{chain.grid.line(worst.at)}; measure further, or set beyond_sweep = "no-rejection"{_stage(job)}'
             )
+        why = (
+            f"they stay {-share_db:.0f} dB under every limit" if share_db <= NEGLIGIBLE_DB else "beyond_sweep allows it"
+        )
         assumed.append(
             f"{job.stage.name}: outside {sweep}, the frequencies of {description.file}, lines are taken to pass as the "
-            f"carrier does; they stay {-share_db:.0f} dB under every limit"
-            if share_db <= NEGLIGIBLE_DB
-            else f"{job.stage.name}: outside {sweep}, the frequencies of {description.file}, lines are taken to pass as "
-            "the carrier does, as beyond_sweep allows"
+            f"carrier does; {why}"
         )
     return tuple(assumed)
 

@@ -8,6 +8,7 @@ import numpy as np
 
 from harmonic_planner.chain.assemble import ChainArrays
 from harmonic_planner.chain.levels import CarrierLevels
+from harmonic_planner.chain.limits import general_limit_dbc
 from harmonic_planner.chain.propagate import Comb, carrier_spread
 from harmonic_planner.chain.second_order import needs_exact
 from harmonic_planner.model import Scenario
@@ -98,8 +99,35 @@ def assumptions_for(scenario: Scenario, chain: ChainArrays, jobs: Sequence[Job])
             if not stage.amplifier.lines_dbc:
                 found.append(f"{stage.name}: the amplifier is taken to make no lines of its own")
     found.append(f"lines are carried up to {float(chain.grid.line(chain.grid.count - 1)):g} times the source")
-    found.append("leakage is counted past each filter; from earlier stages to later inputs it is not")
+    if any(np.isfinite(stage.design.isolation.level_db) for stage in scenario.stages):
+        found.append(
+            "leakage is counted past each filter, and from the source's and every earlier stage's carrier, where it is "
+            "strongest, to every later input and to the output, by the isolation of the stage that it reaches"
+        )
     found.append("element values are ideal, with the kit's losses; strays are judged part by part")
+    return tuple(found)
+
+
+def notes_on_limits(scenario: Scenario, levels: Sequence[CarrierLevels]) -> tuple[str, ...]:
+    """Say what limits that depend on the carrier's level come to."""
+    found = []
+    last = len(levels) - 1
+    places = [(f"stage[{i + 1}].tap", stage.tap, i) for i, stage in enumerate(scenario.stages)]
+    for place, limits, i in (*places, ("output", scenario.output, last)):
+        if limits is None:
+            continue
+        carrier_dbm = float(np.max(levels[i].output_dbm))
+        if limits.limit_dbm is not None:
+            found.append(
+                f"{place}.limit_dbm = {limits.limit_dbm:g} dBm is {limits.limit_dbm - carrier_dbm:.1f} dBc, the carrier "
+                f"being {carrier_dbm:.1f} dBm"
+            )
+        if limits.sm329_category_a:
+            found.append(
+                f"{place}.limit: Recommendation ITU-R SM.329, category A, 43 + 10 log10 P dB or 70 dBc, whichever is less "
+                f"stringent (memory), is {general_limit_dbc(limits, carrier_dbm):.1f} dBc, the carrier being "
+                f"{carrier_dbm:.1f} dBm; it governs emission at an antenna, and local rules come first"
+            )
     return tuple(found)
 
 

@@ -1,6 +1,7 @@
 """Low-pass and high-pass filters for a stage that needs cleaning on one side only.
 
-A low-pass of n elements counts as n/2 resonators. Its cut-off lies between the lowest that passes the carrier, over
+A low-pass counts one resonator for every pair of its parts: with an odd part left over it has no more parts than a
+bandpass of so many resonators and its couplings. Its cut-off lies between the lowest that passes the carrier, over
 span and drift, and the highest that rejects every line; the highest loses least and has the milder values.
 """
 
@@ -29,7 +30,7 @@ def able_one_sided(job: Job, resonators: int) -> Iterator[tuple[Prototype, Topol
     """Yield the prototypes that count as so many resonators, with the topologies that realise them."""
     for topology in one_sided_topologies(job):
         for family in job.design.families:
-            for elements in (2 * resonators - 1, 2 * resonators):
+            for elements in (1, 2, 3) if resonators == 1 else (2 * resonators, 2 * resonators + 1):
                 if elements <= job.design.max_order:
                     prototype = Prototype(family, elements, job.design.ripple_db)
                     if realises(topology.name, prototype):

@@ -5,17 +5,19 @@ from __future__ import annotations
 from collections.abc import Sequence
 from dataclasses import dataclass
 
-from harmonic_planner.chain.assemble import Array, ChainArrays, assemble
-from harmonic_planner.chain.levels import carrier_levels
+from harmonic_planner.chain.assemble import Array, ChainArrays, assemble, at_levels
+from harmonic_planner.chain.levels import CarrierLevels
 from harmonic_planner.model import Phases, Plan, Scenario
 from harmonic_planner.parts.kits import Kit, kit_names, load_kit
 from harmonic_planner.planning.built import Built
 from harmonic_planner.planning.evaluate import Run, beyond_db, run
 from harmonic_planner.planning.jobs import Job, make_jobs, sample
+from harmonic_planner.planning.leveled import settle_at_levels
 from harmonic_planner.planning.measured import notes_on_measured, refuse_beyond
+from harmonic_planner.planning.notes import notes_on_limits
 from harmonic_planner.planning.proposals import NO_ADVICE, Advice, propose
 from harmonic_planner.planning.selfcheck import run_checks
-from harmonic_planner.planning.settle import Settled, settle
+from harmonic_planner.planning.settle import Settled
 from harmonic_planner.planning.stage_filter import StageFilter, from_built
 from harmonic_planner.planning.summary import Findings, summarise
 
@@ -51,14 +53,13 @@ def work_out(scenario: Scenario) -> WorkedOut:
         Where a device, a kit or a given filter cannot be used.
     """
     phases = scenario.design.phases
-    chain = assemble(scenario, phases=phases)
-    jobs = make_jobs(scenario, chain)
+    lossless = assemble(scenario, phases=phases)
+    jobs = make_jobs(scenario, lossless)
     margins_db = [s.design.margin_db for s in scenario.stages]
 
-    settled = settle(chain, jobs, margins_db)
+    found = settle_at_levels(scenario, lossless, jobs, margins_db)
 
-    samples = [sample(job, f.attenuation) for job, f in zip(jobs, settled.filters, strict=True)]
-    transmissions = [s.transmission for s in samples]
+    chain, settled, transmissions = found.chain, found.settled, found.transmissions
     beyond_sweep = refuse_beyond(chain, jobs, transmissions)
     plan = summarise(
         Findings(
@@ -68,20 +69,20 @@ def work_out(scenario: Scenario) -> WorkedOut:
             settled=settled,
             transmissions=transmissions,
             run=run(chain, transmissions),
-            other=_run_other_phases(scenario, settled.filters),
-            levels=carrier_levels(scenario, [s.carrier_db for s in samples]),
+            other=_run_other_phases(scenario, settled.filters, found.levels),
+            levels=found.levels,
             advice=_advise(scenario, chain, jobs, settled, transmissions, margins_db),
             checks=run_checks(scenario, chain, jobs, settled, margins_db),
-            assumed=(*notes_on_measured(scenario), *beyond_sweep),
+            assumed=(*notes_on_limits(scenario, found.levels), *notes_on_measured(scenario), *beyond_sweep),
         )
     )
     return WorkedOut(plan, tuple(f.built for f in settled.filters))
 
 
-def _run_other_phases(scenario: Scenario, filters: Sequence[StageFilter]) -> Run:
+def _run_other_phases(scenario: Scenario, filters: Sequence[StageFilter], levels: Sequence[CarrierLevels]) -> Run:
     """Run the same filters under the other phase rule."""
     other: Phases = "average" if scenario.design.phases == "worst-case" else "worst-case"
-    chain = assemble(scenario, phases=other)
+    chain = at_levels(scenario, assemble(scenario, phases=other), levels)
     jobs = make_jobs(scenario, chain)
     return run(chain, [sample(job, f.attenuation).transmission for job, f in zip(jobs, filters, strict=True)])
 

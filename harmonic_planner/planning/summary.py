@@ -16,6 +16,7 @@ from harmonic_planner.model import (
     FilterPlan,
     LineLevel,
     MeasuredFilter,
+    OutputLine,
     OutputPlan,
     PhaseNoisePoint,
     Plan,
@@ -123,7 +124,17 @@ def _stage(f: Findings, i: int) -> StagePlan:
         output_lines=_lines(f.chain, comb.leaving),
         filter=_filter(f, i),
         limit_dbc=stage.limit_dbc,
+        limited_lines=_limited_lines(f, i),
     )
+
+
+def _limited_lines(f: Findings, i: int) -> tuple[OutputLine, ...]:
+    """Return the lines that a stage's own limit or its tap's asks about."""
+    stage = f.scenario.stages[i]
+    if stage.limit_dbc is None and stage.tap is None:
+        return ()
+    lines = output_lines(f.scenario, f.chain, f.transmissions, f.run, f.other.margin_db[i], to=i)
+    return tuple(line for line in lines if line.limit_dbc is not None)
 
 
 def _lines(chain: ChainArrays, comb: Array) -> tuple[LineLevel, ...]:

@@ -5,27 +5,31 @@ from dataclasses import replace
 from harmonic_planner.export.filter_files import filter_files, filter_names
 from harmonic_planner.export.names import stage_stem
 from harmonic_planner.export.nodes import line_frequency_hz
-from harmonic_planner.export.plan_json import plan_json
+from harmonic_planner.export.plan_json import layout, plain, plan_json
 from harmonic_planner.export.tables import elements_csv, lines_csv, requirements_csv
 from harmonic_planner.model import Plan, StagePlan
 from harmonic_planner.planning.built import Built, passband_hz
+from harmonic_planner.planning.comparison import Comparison
 from harmonic_planner.planning.plan import WorkedOut
 from harmonic_planner.report.figures import stage_figures
 
 
-def plan_files(worked: WorkedOut) -> dict[str, bytes | str]:
+def plan_files(worked: WorkedOut, comparison: Comparison | None = None) -> dict[str, bytes | str]:
     """Make every file of a plan.
 
     Parameters
     ----------
     worked : WorkedOut
         The plan, with the circuits behind it.
+    comparison : Comparison, optional
+        With lines measured at the output.
 
     Returns
     -------
     dict of str to bytes or str
         File name and content: ``plan.json``, three tables, two figures a stage, and for every filter that is a circuit
-        a netlist, a bench deck and a Touchstone file. The same plan gives the same bytes.
+        a netlist, a bench deck and a Touchstone file; ``comparison.json`` where there is one. The same plan gives the
+        same bytes.
     """
     plan = with_file_names(worked)
     files: dict[str, bytes | str] = {
@@ -37,6 +41,8 @@ def plan_files(worked: WorkedOut) -> dict[str, bytes | str]:
     for number, (stage, built) in enumerate(zip(plan.stages, worked.circuits, strict=True), start=1):
         if built is not None:
             files |= _of_filter(plan, number, stage, built)
+    if comparison is not None:
+        files["comparison.json"] = layout(plain(comparison)) + "\n"
     return {"plan.json": plan_json(plan, [*files, "plan.json"]), **files}
 
 

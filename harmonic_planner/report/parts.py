@@ -1,8 +1,8 @@
 """The parts of filters on the terminal: which of a plan's to look at, and all of one filter's."""
 
+import re
 from collections.abc import Iterable, Iterator
 from dataclasses import dataclass
-from itertools import groupby
 
 from rich import box
 from rich.console import Console
@@ -10,13 +10,16 @@ from rich.table import Table
 from rich.text import Text
 
 from harmonic_planner.export.values import quantity, stress_share, to_buy
-from harmonic_planner.model import VERDICT_RANK, ElementReport, Plan, StagePlan
+from harmonic_planner.filters import flags
+from harmonic_planner.model import VERDICT_RANK, ElementReport, ElementVerdict, Plan, StagePlan
 from harmonic_planner.report.console import STYLES, heading, table
 from harmonic_planner.report.text import printable
 
 STRESSED = 0.8
 """Share of a rating beyond which a part is shown; common practice, no source (memory)."""
 
+_OF_THE_FILTER = ", below the highest line to reject"
+"""A remark about the whole filter, which one of its parts makes for all."""
 _MOST = 12
 _WIDTHS = {"part": 4, "to buy": 17, "verdict": 8}
 _GAP = 2
@@ -65,7 +68,12 @@ def stress_words(part: ElementReport) -> Iterator[str]:
 def show_doubts(plan: Plan, screen: Console) -> None:
     """Show the parts to look at, stage by stage, with what is bought for each.
 
-    A remark that stands in the row above is not repeated.
+    Parameters
+    ----------
+    plan : Plan
+        The plan.
+    screen : Console
+        Where to show them; nothing where all parts are good.
     """
     found = doubts(plan)
     if not found:
@@ -74,18 +82,18 @@ def show_doubts(plan: Plan, screen: Console) -> None:
     screen.print(_grid(screen, heads=True))
     shown = found[:_MOST]
     for stage in dict.fromkeys(doubt.stage.name for doubt in shown):
-        rows = _grid(screen)
-        before = ""
         of_stage = [doubt for doubt in shown if doubt.stage.name == stage]
+        rows = _grid(screen)
+        said = False
         for doubt in of_stage:
-            remark, _, aside = doubt.reason.partition(", ")
+            remark, of_filter, _ = doubt.reason.partition(_OF_THE_FILTER)
             rows.add_row(
                 doubt.part.ref,
                 _buy_text(doubt.part),
                 Text(doubt.part.verdict, style=STYLES[doubt.part.verdict]),
-                Text(printable(remark if aside == before else doubt.reason)),
+                Text(printable(remark if said and of_filter else doubt.reason), style=_reason_style(doubt.part)),
             )
-            before = aside
+            said = said or bool(of_filter)
         screen.print(Text(printable(_stage_words(of_stage[0].stage)), style="italic"))
         screen.print(rows)
     if len(found) > _MOST:
@@ -123,16 +131,37 @@ def element_table(parts: Iterable[ElementReport]) -> Table:
 
 
 def element_remarks(parts: Iterable[ElementReport]) -> Iterator[str]:
-    """Say what is wrong with the parts of one filter; parts with the same remark are named together."""
-    wrong = sorted((part for part in parts if part.verdict != "ok"), key=lambda part: -VERDICT_RANK[part.verdict])
-    for _, alike in groupby(wrong, key=lambda part: (part.verdict, _gravest(part))):
-        same = list(alike)
-        yield f"{', '.join(part.ref for part in same)} {same[0].verdict}: {_gravest(same[0])}"
+    """Say what is wrong with the parts of one filter.
+
+    Parameters
+    ----------
+    parts : iterable of ElementReport
+
+    Yields
+    ------
+    str
+        Parts with the same fault together, with the numbers of the worst of them.
+    """
+    alike: dict[tuple[ElementVerdict, str], list[ElementReport]] = {}
+    for part in sorted(parts, key=lambda part: -VERDICT_RANK[part.verdict]):
+        if part.verdict != "ok":
+            fault = re.split(r"\d", _gravest(part), maxsplit=1)[0]
+            alike.setdefault((part.verdict, fault), []).append(part)
+    for (verdict, fault), same in alike.items():
+        by_resonance = fault.startswith("self-resonance")
+        worst = min(same, key=lambda part: part.self_resonance_hz) if by_resonance else flags.worst(same)
+        example = f" ({worst.ref})" if len(same) > 1 else ""
+        yield f"{', '.join(part.ref for part in same)} {verdict}: {_gravest(worst)}{example}"
 
 
 def _gravest(part: ElementReport) -> str:
     """Return the first of a part's reasons, which is the gravest."""
     return part.reason.partition(";")[0]
+
+
+def _reason_style(part: ElementReport) -> str:
+    """Let a part that bears more than it may stand out, whatever its verdict."""
+    return "bold red" if (stress_share(part) or 0.0) > 1.0 else ""
 
 
 def _buy_text(part: ElementReport) -> str:

@@ -90,13 +90,11 @@ class Response:
 def _limits(plan: Plan, index: int) -> list[LineLevel]:
     """Return the limit at every line of a stage's output, the stricter where the chain's stands there too."""
     stage = plan.stages[index]
+    at_output = plan.output.lines if index == len(plan.stages) - 1 else ()
     found: dict[Fraction, float] = {}
-    if stage.limit_dbc is not None:
-        found = {level.line: stage.limit_dbc for level in stage.output_lines}
-    if index == len(plan.stages) - 1:
-        for line in plan.output.lines:
-            if line.limit_dbc is not None:
-                found[line.line] = min(line.limit_dbc, found.get(line.line, line.limit_dbc))
+    for line in (*stage.limited_lines, *at_output):
+        if line.limit_dbc is not None:
+            found[line.line] = min(line.limit_dbc, found.get(line.line, line.limit_dbc))
     return [LineLevel(line, limit) for line, limit in found.items()]
 
 
@@ -240,6 +238,8 @@ def _heading(index: int, stage: StagePlan) -> str:
 def _filter_note(stage: StagePlan) -> str:
     """Say in one line which filter it is."""
     made = stage.filter
+    if made.source in ("touchstone", "table"):
+        return f"{printable(made.reason).capitalize()}, loss {decibels(made.loss_db)} dB"
     if made.centre_hz is None or made.bandwidth_hz is None:
         return f"No filter: {printable(made.reason)}" if made.reason else "No filter"
     band = "cut-off" if is_one_sided(made.topology) else f"{quantity(made.bandwidth_hz, 'Hz', 3)} at"

@@ -167,18 +167,17 @@ def _stage_table(plan: Plan) -> Table:
     carrier, centre = f"carrier\n{unit}", f"centre\n{unit}"
     circuit = "topology,\nkit" if len(kits) > 1 else "topology"
     right = (carrier, "band\n%", centre, "loss\ndB", "margin\ndB")
+    circuits = [_circuit_lines(stage.filter, with_kit=len(kits) > 1) for stage in plan.stages]
+    narrow = all(len(line) <= _LONGEST_TOPOLOGY for lines in circuits for line in lines)
     made = table(
         *("stage", carrier, "filter", "band\n%", centre, circuit, "loss\ndB", "margin\ndB", "parts"),
         right=right,
-        fixed=("filter", "parts"),
+        fixed=("filter", "parts", circuit) if narrow else ("filter", "parts"),
         gap=1,
     )
-    made.columns[5].min_width = min(_LONGEST_TOPOLOGY, max(len(s.filter.topology or "") for s in plan.stages))
-    for number, stage in enumerate(plan.stages, start=1):
+    for number, (stage, lines) in enumerate(zip(plan.stages, circuits, strict=True), start=1):
         filter_plan = stage.filter
         margins = [need.margin_db for need in filter_plan.requirement if need.required_db > 0]
-        words = [_broken(filter_plan.topology or "–")]
-        words += [filter_plan.kit] if len(kits) > 1 and filter_plan.kit else []
         parts = _parts(filter_plan)
         made.add_row(
             Text(f"{number} {printable(stage.name)}"),
@@ -186,7 +185,7 @@ def _stage_table(plan: Plan) -> Table:
             _filter_words(filter_plan),
             _band_percent(filter_plan),
             "–" if filter_plan.centre_hz is None else number_text(filter_plan.centre_hz / scale),
-            Text("\n".join(words)),
+            Text("\n".join(lines)),
             decibels(filter_plan.loss_db),
             decibels(min(margins, default=None), signed=True),
             Text(parts, style=STYLES.get(parts, "")),
@@ -201,10 +200,12 @@ def _band_percent(made: FilterPlan) -> str:
     return f"{100 * made.bandwidth_hz / made.centre_hz:.1f}"
 
 
-def _broken(name: str) -> str:
-    """Break a long name behind its last hyphen."""
+def _circuit_lines(made: FilterPlan, *, with_kit: bool) -> list[str]:
+    """Write a filter's topology, a long name broken behind its last hyphen, and below it the kit."""
+    name = made.topology or "–"
     start, hyphen, end = name.rpartition("-")
-    return f"{start}{hyphen}\n{end}" if hyphen and len(name) > _LONGEST_TOPOLOGY else name
+    lines = [start + hyphen, end] if hyphen and len(name) > _LONGEST_TOPOLOGY else [name]
+    return [*lines, printable(made.kit)] if with_kit and made.kit else lines
 
 
 def _parts(made: FilterPlan) -> str:

@@ -9,7 +9,7 @@ from rich.table import Table
 from rich.text import Text
 
 from harmonic_planner.export.values import frequency_scale, number_text
-from harmonic_planner.model import ElementReport, Window
+from harmonic_planner.model import ElementReport, Family, Window
 from harmonic_planner.planning.bench import Answer, Asked
 from harmonic_planner.planning.built import Built
 from harmonic_planner.report.console import bullet, section, table, verdict_line
@@ -23,6 +23,9 @@ from harmonic_planner.report.text import (
     span,
     span_of,
 )
+
+_NAMED = 4
+"""At most so many parts are named in the sentence."""
 
 
 def does_it(answer: Answer) -> bool:
@@ -81,33 +84,37 @@ def sentence(answer: Answer, lines: Sequence[Asked]) -> str:
     resonator = built.form.resonator
     circuit = circuit_words(built.prototype.family, built.prototype.order, built.topology, resonator)
     band = band_words(built.topology, bandwidth_hz=built.bandwidth * built.centre_hz, centre_hz=built.centre_hz)
-    does = f"rejects every line as built with {decibels(spare_db)} dB to spare and loses {decibels(built.midband_db)} dB"
+    does = f"rejects every line as built, {decibels(spare_db)} dB to spare at the least"
+    loss = f"{decibels(built.midband_db)} dB loss"
+    why = f" Why: {answer.reason}." if "; " in answer.reason else ""
+    return f"{circuit} of {built.form.kit.name}, {band}, {does}, with {loss}; {_parts_words(built)}.{why}"
+
+
+def _parts_words(built: Built) -> str:
+    """Say how many of the parts have the worst verdict, and which."""
     worst = [part.ref for part in built.elements if part.verdict == built.verdict]
-    parts = {
-        "ok": "all parts ok",
-        "marginal": f"parts are marginal at worst ({', '.join(worst)})",
-        "swamped": f"but strays or the kit's range swamp {', '.join(worst)}",
-    }[built.verdict]
-    return f"{circuit}, {band}, of {built.form.kit.name} {does}; {parts}. Chosen so: {answer.reason}."
+    if built.verdict == "ok":
+        return "all parts ok"
+    named = f" ({', '.join(worst)})" if len(worst) <= _NAMED else ""
+    return f"{len(worst)} of {len(built.elements)} parts {built.verdict}{named}"
 
 
 def bought_parts(built: Built) -> tuple[ElementReport, ...]:
     """Return a filter's parts from the input to the output, with what is bought for each."""
     bought = {
-        element.ref: values for element, values in zip(built.circuit.elements, built.parts, strict=bool(built.parts))
+        element.ref: values for element, values in zip(built.nominal.elements, built.parts, strict=bool(built.parts))
     }
     return tuple(replace(part, bought=bought.get(part.ref, ())) for part in built.elements)
 
 
 def _show_windows(answer: Answer, screen: Console) -> None:
-    """Show the windows in a table, and below it the orders that have none with what the highest of them lacks."""
-    open_windows = [window for window in answer.windows if window.feasible]
-    made = _window_table(open_windows, answer.built) if open_windows else table("filter")
+    """Show the windows in a table, and below it why there is none for other orders."""
+    usable = [window for window in answer.windows if window.feasible and not window.reason]
+    made = _window_table(usable, answer.built) if usable else table("filter")
     section(screen, "Windows: bandwidths that pass the carrier and reject every line", made)
-    reasons = {window.reason for window in answer.windows if not window.feasible}
-    if not open_windows and len(reasons) == 1 and answer.reason in reasons:
+    if not usable and {window.reason for window in answer.windows} == {answer.reason}:
         return  # the sentence at the top says it
-    for text in _none(answer.windows):
+    for text in _without(answer.windows):
         bullet(screen, Text(printable(text)))
 
 
@@ -116,16 +123,14 @@ def _window_table(windows: Sequence[Window], built: Built | None) -> Table:
     scale, unit = frequency_scale(max(window.bandwidth_max_hz for window in windows))
     centre_scale, centre_unit = frequency_scale(min(window.centre_hz for window in windows))
     band, centre = f"bandwidth {unit}", f"centre {centre_unit}"
-    made = table(
-        *("filter", "bandwidth %", band, centre, ""), right=("bandwidth %", band, centre), fixed=("filter",)
-    )
+    made = table(*("filter", "bandwidth %", band, centre, ""), right=("bandwidth %", band, centre), fixed=("filter",))
     for window in windows:
         made.add_row(
             filter_name(window.family, window.order),
             _percent(window),
             span_of((window.bandwidth_min_hz, window.bandwidth_max_hz), scale, 3),
             number_text(window.centre_hz / centre_scale),
-            Text("chosen" if built is not None and _is_of(window, built) else printable(window.reason)),
+            "chosen" if built is not None and _is_of(window, built) else "",
         )
     return made
 
@@ -145,17 +150,26 @@ def _is_of(window: Window, built: Built) -> bool:
     return not built.one_sided and (window.family, window.order) == (prototype.family, prototype.order)
 
 
-def _none(windows: Sequence[Window]) -> Iterator[str]:
-    """Say for each run of orders without a window why the highest of them has none."""
+def _without(windows: Sequence[Window]) -> Iterator[str]:
+    """Say for each run of orders without a usable window why the highest of them has none."""
+    unrealised: dict[str, dict[Family, list[int]]] = {}
     for (family, feasible), group in groupby(windows, key=lambda window: (window.family, window.feasible)):
-        if feasible:
-            continue
         run = list(group)
+        if feasible:
+            for window in run:
+                if window.reason:
+                    unrealised.setdefault(window.reason, {}).setdefault(family, []).append(window.order)
+            continue
         first, last = run[0].order, run[-1].order
         if first == last:
             yield f"{filter_name(family, last)} has none: {run[-1].reason}"
         else:
             yield f"{filter_name(family, first)} to {last} have none; order {last}: {run[-1].reason}"
+    for reason, orders in unrealised.items():
+        names = (
+            f"{filter_name(family, of[0])}{''.join(f', {order}' for order in of[1:])}" for family, of in orders.items()
+        )
+        yield f"{'; '.join(names)} have windows, but {reason}"
 
 
 def _rejection_table(answer: Answer, lines: Sequence[Asked]) -> Table:

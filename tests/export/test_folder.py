@@ -145,6 +145,92 @@ def test_files_that_desktops_leave_behind_do_not_count(tmp_path):
     assert not (out / ".DS_Store").exists()
 
 
+DEEP = {
+    "plan.json": json.dumps({"schema": SCHEMA, "files": ["plan.json", "filters/01_a.cir", "filters/01_a.s2p"]}),
+    "filters/01_a.cir": "* one",
+    "filters/01_a.s2p": "! one",
+}
+
+
+def test_a_folder_inside_is_replaced_whole_with_what_the_earlier_plan_wrote_there(tmp_path):
+    out = tmp_path / "out"
+    folder.write(out, DEEP)
+    newer = {"plan.json": json.dumps({"schema": SCHEMA, "files": ["filters/02_b.cir"]}), "filters/02_b.cir": "* two"}
+    folder.write(out, newer)
+    assert sorted(snapshot(out)) == ["filters", "filters/02_b.cir", "plan.json"]
+    folder.write(out, PLAN)
+    assert sorted(snapshot(out)) == ["lines.csv", "plan.json"]
+
+
+def add_file_inside(out: Path) -> None:
+    (out / "filters" / "notes.txt").write_text("mine")
+
+
+def add_file_of_a_listed_name_elsewhere(out: Path) -> None:
+    (out / "01_a.cir").write_text("mine")
+
+
+def add_file_deeper(out: Path) -> None:
+    (out / "filters" / "old").mkdir()
+    (out / "filters" / "old" / "01_a.cir").write_text("mine")
+
+
+def add_link_inside(out: Path) -> None:
+    (out / "filters" / "bench").symlink_to(out.parent)
+
+
+def replace_folder_by_link(out: Path) -> None:
+    (out / "filters").rename(out.parent / "kept")
+    (out / "filters").symlink_to("../kept")
+
+
+@pytest.mark.parametrize(
+    ("change", "name"),
+    [
+        (add_file_inside, "filters/notes.txt"),
+        (add_file_of_a_listed_name_elsewhere, "01_a.cir"),
+        (add_file_deeper, "filters/old/01_a.cir"),
+        (add_link_inside, "filters/bench"),
+        (replace_folder_by_link, "filters"),
+    ],
+)
+def test_what_is_not_ours_in_a_folder_inside_is_refused_and_left_alone(tmp_path, change, name):
+    out = tmp_path / "out"
+    folder.write(out, DEEP)
+    change(out)
+    before = snapshot(tmp_path)
+    with pytest.raises(OutputRefusedError, match=f"holds {name},"):
+        folder.write(out, DEEP)
+    assert snapshot(tmp_path) == before
+
+
+@pytest.mark.parametrize("fail_at", range(5))
+def test_a_failure_among_folders_inside_restores_what_was_there(tmp_path, monkeypatch, fail_at):
+    """The nth call fails: the new folder and the one in it made, three files written."""
+    out = tmp_path / "out"
+    folder.write(out, DEEP)
+    before = snapshot(tmp_path)
+    calls = 0
+
+    def failing(original):
+        def call(self, *args, **settings):
+            nonlocal calls
+            calls += 1
+            if calls - 1 == fail_at:
+                raise OSError(28, "No space left on device")
+            return original(self, *args, **settings)
+
+        return call
+
+    monkeypatch.setattr(Path, "write_bytes", failing(Path.write_bytes))
+    monkeypatch.setattr(Path, "mkdir", failing(Path.mkdir))
+    with pytest.raises(OutputWriteError, match="No space left"):
+        folder.write(out, DEEP)
+    monkeypatch.undo()
+    assert calls > fail_at
+    assert snapshot(tmp_path) == before
+
+
 def test_refuses_a_file_in_the_way(tmp_path):
     (tmp_path / "file").write_text("mine")
     with pytest.raises(OutputRefusedError, match="file is a file"):

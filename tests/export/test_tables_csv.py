@@ -11,7 +11,7 @@ from hypothesis import strategies as st
 
 from harmonic_planner.export.nodes import line_frequency_hz, origins_text
 from harmonic_planner.export.tables import elements_csv, inert, lines_csv, requirements_csv
-from harmonic_planner.model import Origin
+from harmonic_planner.model import ElementReport, Origin
 
 from plan_fixture import SWAMPED_REASON, example_plan, span_hz
 
@@ -67,6 +67,31 @@ def test_elements_lists_every_part_with_verdict_and_reason():
     ]
     assert table[3]["reason"] == SWAMPED_REASON
     assert float(table[3]["ideal"]) == 0.73e-12
+
+
+def test_elements_say_what_is_bought_as_text_and_as_numbers_in_the_unit():
+    table = rows(elements_csv(example_plan()))
+    coil, pair = table[:2]
+    assert (coil["bought"], coil["bought_1"], coil["bought_2"]) == ("27 nH", "2.7e-08", "")
+    assert pair["bought"] == "270 pF + 4.7 pF"
+    assert (float(pair["bought_1"]), float(pair["bought_2"])) == (270e-12, 4.7e-12)
+    assert float(pair["bought_1"]) + float(pair["bought_2"]) == pytest.approx(float(pair["nominal"]))
+    assert (pair["unit"], pair["kit"], pair["topology"]) == ("F", "chip-1008", "ladder-shunt")
+
+
+def test_elements_say_what_is_borne_and_what_may_be_borne_and_leave_unknown_ratings_empty():
+    coil, capacitor = rows(elements_csv(example_plan()))[:2]
+    keys = ("peak_v", "rated_v", "rms_a", "rated_a")
+    assert [coil[key] for key in keys] == ["1.0", "", "0.5", "0.6"]
+    assert [capacitor[key] for key in keys] == ["5.0", "50.0", "0.01", ""]
+
+
+def test_an_element_of_which_nothing_is_known_but_its_value_has_empty_cells():
+    plan = example_plan()
+    bare = ElementReport("L1", "L", "series", 1e-9, 1e-9, "H", 30.0, 2e8, 0.2, "ok", "")
+    stage = replace(plan.stages[0], filter=replace(plan.stages[0].filter, elements=(bare,)))
+    (row,) = rows(elements_csv(replace(plan, stages=(stage,))))
+    assert [row[key] for key in ("bought", "bought_1", "bought_2", "peak_v", "rms_a")] == [""] * 5
 
 
 def test_a_name_that_would_be_a_formula_is_inert_and_numbers_are_not_touched():

@@ -58,8 +58,9 @@ def shape(any_device: Device, times: int, x: np.ndarray) -> np.ndarray:
 
 
 def comb(rng: np.random.Generator, count: int, carrier_index: int, level_db: float) -> np.ndarray:
-    """Return a carrier of amplitude 1 and lines at random phases that sum to `level_db`, weaker to the far end."""
+    """Return a carrier of amplitude 1 and ten lines at random phases that sum to `level_db`, weaker to the far end."""
     lines = (rng.normal(size=count) + 1j * rng.normal(size=count)) / np.arange(1, count + 1)
+    lines[rng.permutation(count)[10:]] = 0
     lines[carrier_index - 1] = 0
     lines *= 10 ** (level_db / 20) / np.abs(lines).sum()
     lines[carrier_index - 1] = 1
@@ -84,15 +85,15 @@ def test_the_carrier_alone_gives_the_closed_series(name: str, carrier_index: int
 @pytest.mark.parametrize("name", CASES)
 @pytest.mark.parametrize("level_db", [-60.0, -30.0, -15.0])
 def test_a_whole_comb_against_fine_sampling(name: str, level_db: float) -> None:
-    """independent: 2^19 samples of one period; their own folding is below 1e-8 of the wanted line here."""
+    """independent: 2^18 samples of one period; their own folding is below 1e-7 of the wanted line here."""
     any_device, times = CASES[name]
     rng = np.random.default_rng(5)
-    carrier_index, count, fine = 8, 8 * times * 4, 2**19
+    carrier_index, count, fine = 8, 8 * times * 4, 2**18
     lines = comb(rng, count, carrier_index, level_db)
     t = 2 * np.pi * np.arange(fine) / fine
     x = np.zeros(fine)
-    for j, a in enumerate(lines, 1):
-        x += np.abs(a) * np.cos(j * t + np.angle(a))
+    for j in np.flatnonzero(lines):
+        x += np.abs(lines[j]) * np.cos((j + 1) * t + np.angle(lines[j]))
     expected = np.fft.rfft(shape(any_device, times, x))[1 : count + 1] * 2 / fine
     got = driven(any_device, times, lines, carrier_index=carrier_index)
     assert np.abs(got - expected).max() < FOLDED * np.abs(expected[carrier_index * times - 1])

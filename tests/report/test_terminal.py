@@ -6,9 +6,11 @@ from dataclasses import replace
 import pytest
 from rich.console import Console
 
+from harmonic_planner.model import AllocationPlan
 from harmonic_planner.report import terminal
+from harmonic_planner.report.console import console
 
-from plan_fixture import SWAMPED_REASON, doubler, example_plan
+from plan_fixture import SWAMPED_REASON, doubler, element, example_plan, tripler
 
 
 def shown(show=terminal.show_plan, plan=None, **settings) -> str:
@@ -78,16 +80,118 @@ def test_at_most_five_output_lines_are_shown():
     assert sum(row.startswith("3 ") for row in rows) == 5
 
 
-def test_parts_that_are_not_ok_are_shown_worst_first_with_their_reason():
+def parts_shown(plan=None) -> list[list[str]]:
+    """Words of the rows under parts to look at, headings of stages and continued lines among them."""
+    return [row.split() for row in section(shown(plan=plan), "Parts to look at")[2:]]
+
+
+def with_parts(*parts, name="d", **filter_plan):
+    """The example with one stage that has these parts."""
+    return replace(
+        example_plan(),
+        stages=(replace(doubler(), name=name, filter=replace(doubler().filter, elements=parts, **filter_plan)),),
+    )
+
+
+def test_parts_that_are_not_ok_are_shown_worst_first_with_what_to_buy_and_their_reason():
     rows = section(shown(), "Parts to look at")
     verdicts = [word for row in rows for word in row.split() if word in ("ok", "marginal", "swamped")]
-    assert verdicts == ["swamped", "marginal"]
-    assert SWAMPED_REASON in words(" ".join(row[50:] for row in rows))
+    assert verdicts == ["swamped", "marginal", "ok"]
+    assert rows[2].strip() == "=cmd|[bold] $x_ doubler, ladder-series, chip-1008"
+    assert rows[3].split()[:4] == ["C1", "0.75", "pF", "swamped"]
+    assert SWAMPED_REASON in words(rows[3][35:])
+
+
+def test_two_parts_in_parallel_are_bought_by_name():
+    part = element("C12", "series", 3e-12, 1.8e-12, 1.2e-12, verdict="marginal", reason="strays 12 %")
+    assert parts_shown(with_parts(part))[1] == ["C12", "1.8", "pF", "+", "1.2", "pF", "marginal", "strays", "12", "%"]
+
+
+def test_a_part_near_its_rating_is_shown_whatever_its_verdict_with_share_and_rating():
+    near = element("L2", "shunt", 8e-9, 8.2e-9, rms_a=0.57, rated_a=0.7)
+    far = element("L3", "shunt", 8e-9, 8.2e-9, rms_a=0.55, rated_a=0.7)
+    beyond = element(
+        "C2", "shunt", 8e-12, 8e-12, peak_v=61.0, rated_v=50.0, verdict="marginal", reason="strays 12 %; b"
+    )
+    text = words(" ".join(section(shown(plan=with_parts(near, far, beyond)), "Parts to look at")))
+    assert "L2 8.2 nH ok bears 570 mA rms, 81 % of its 700 mA" in text
+    assert "C2 8 pF marginal strays 12 %; bears 61 V peak, 122 % of its 50 V" in text
+    assert "L3" not in text
+
+
+def test_parts_that_bear_little_and_are_ok_are_not_shown():
+    assert "Parts to look at" not in shown(plan=with_parts(element("L1", "shunt", 8e-9, 8.2e-9)))
+
+
+def test_a_remark_about_the_filter_is_made_once_a_stage_and_reasons_beyond_the_first_not_at_all():
+    remark = "below the highest line to reject, 9.58 GHz"
+    parts = [
+        element(
+            f"C{i}", "shunt", 8e-12, 8e-12, verdict="marginal", reason=f"self-resonance {i} GHz, {remark}; strays 9 %"
+        )
+        for i in (1, 2, 3)
+    ]
+    text = words(shown(plan=with_parts(*parts)))
+    assert text.count(remark) == 1
+    assert all(f"self-resonance {i} GHz" in text for i in (1, 2, 3))
+    assert "strays 9 %" not in text
+
+
+def test_many_parts_are_counted():
+    parts = [element(f"C{i}", "shunt", 8e-12, 8e-12, verdict="marginal", reason="strays 12 %") for i in range(15)]
+    text = shown(plan=with_parts(*parts))
+    assert sum("strays 12 %" in row for row in text.splitlines()) == 12
+    assert "and 3 more in elements.csv" in text
+
+
+def test_topologies_and_kits_are_in_the_stage_table_kits_only_where_there_are_several():
+    assert "chip-1008" not in " ".join(section(shown(), "Stages"))
+    second = replace(doubler(), filter=replace(doubler().filter, kit="air-wound", topology="series-capacitive"))
+    plan = replace(example_plan(), stages=(tripler(), second))
+    rows = section(shown(plan=plan), "Stages")
+    start = rows[0].index("topology")
+    assert [row[start : start + 13].strip() for row in rows[:2]] == ["topology,", "kit"]
+    cells = [row[start : start + 13].strip() for row in rows[3:-1]]
+    assert [cell for cell in cells if cell] == ["ladder-shunt", "chip-1008", "series-", "capacitive", "air-wound"]
+    assert max(map(len, rows)) <= 80
+
+
+def test_a_low_pass_has_no_bandwidth_and_a_measured_filter_no_family():
+    low_pass = replace(doubler().filter, topology="low-pass")
+    measured = replace(doubler().filter, source="touchstone", family=None, order=None, topology=None, elements=())
+    stages = tuple(
+        replace(doubler(), name=name, filter=made) for name, made in (("cut", low_pass), ("bench", measured))
+    )
+    rows = section(shown(plan=replace(example_plan(), stages=stages)), "Stages")
+    assert next(row for row in rows if "cut" in row).split()[5:8] == ["–", "120", "low-pass"]
+    bench = next(row for row in rows if "bench" in row).split()
+    assert (bench[3], bench[-1]) == ("measured", "measured")
+
+
+def test_the_allocation_is_said_in_one_line_under_the_stages():
+    assert section(shown(), "Stages")[-1] == (
+        "Allocation: 7 resonators; at least 6 are needed (7 is not proven the least)"
+    )
+    proven = replace(example_plan(), allocation=AllocationPlan(10, 10, proven=True, nodes=3))
+    assert section(shown(plan=proven), "Stages")[-1] == (
+        "Allocation: 10 resonators in all, proven the least for these candidates"
+    )
+    assert "Allocation" not in shown(plan=replace(example_plan(), allocation=None))
+
+
+def test_what_is_said_of_several_stages_is_said_once():
+    plan = example_plan()
+    said = [f"{stage.name}: too narrow: 12 %" for stage in plan.stages[:2]] + ["output.level: missed"]
+    text = words(shown(plan=replace(plan, warnings=tuple(said))))
+    assert f"- first tripler, {plan.stages[1].name}: too narrow: 12 % - output.level: missed" in text
 
 
 def test_proposals_warnings_cautions_checks_and_assumptions_are_there():
     text = words(shown())
-    assert "resonators: Cheb 5 ladder-shunt, 20.2 % at 119 MHz, loss 1.8 dB; worst part marginal (C3), least" in text
+    assert (
+        "doubler: Cheb 5 ladder-shunt, 20.2 % at 119 MHz: loss 1.8 dB, worst part marginal (C3), least output" in text
+    )
+    assert "margin +3.4 dB; price: 1 resonator more" in text
     plan = example_plan()
     for sentence in (*plan.warnings, *plan.cautions, *plan.self_checks):
         assert sentence in text
@@ -96,16 +200,31 @@ def test_proposals_warnings_cautions_checks_and_assumptions_are_there():
 
 def test_proposals_carry_the_numbers_under_which_they_are_taken_and_their_price():
     (one,) = doubler().filter.proposals
-    several = tuple(replace(one, change=f"change {i}", price=f"{i} dB of loss") for i in range(4))
+    several = tuple(replace(one, order=3 + i, price=f"{i} dB of loss") for i in range(4))
     stages = tuple(
         replace(doubler(), name=name, filter=replace(doubler().filter, proposals=several)) for name in ("d", "e")
     )
     text = shown(plan=replace(example_plan(), stages=stages))
-    rows = [row for row in text.splitlines() if "change" in row]
-    assert [row.split(":")[0] for row in rows] == ["1. d", "2. d", "5. e", "6. e"]
+    rows = [row.split() for row in text.splitlines() if "Cheb" in row and "ladder-shunt" in row and row[1:2] == "."]
+    assert [(row[:2], row[3]) for row in rows] == [
+        (["1.", "d:"], "3"),
+        (["2.", "d:"], "4"),
+        (["5.", "e:"], "3"),
+        (["6.", "e:"], "4"),
+    ]
     assert "price: 0 dB of loss" in words(text)
     assert "harmonic-planner apply SCENARIO N (4 more, counted in the same order, in plan.json)" in words(text)
     assert "more" not in words(shown()).partition("apply SCENARIO N")[2].partition("Self-check")[0]
+
+
+def test_a_proposal_says_resonator_kit_and_impedance_where_they_are_not_those_of_the_stage():
+    (one,) = doubler().filter.proposals
+    coupled = replace(one, topology="capacitive", resonator=8.2e-9, kit="air-wound", impedance_ohm=100.0)
+    low_pass = replace(one, topology="low-pass", centre_hz=260e6, bandwidth_hz=260e6, worst_verdict="ok")
+    filter_plan = replace(doubler().filter, proposals=(coupled, low_pass))
+    text = words(shown(plan=replace(example_plan(), stages=(replace(doubler(), name="d", filter=filter_plan),))))
+    assert "1. d: Cheb 5 capacitive with 8.2 nH of air-wound, 20.2 % at 119 MHz, 100 ohm inside: loss" in text
+    assert "2. d: Cheb 5 low-pass, cut-off 260 MHz: loss 1.8 dB, all parts ok, least" in text
 
 
 def test_a_stage_for_which_nothing_helps_says_so():
@@ -118,7 +237,7 @@ def test_a_proposal_that_cannot_be_built_is_not_shown_as_help():
     (proposal,) = doubler().filter.proposals
     filter_plan = replace(doubler().filter, proposals=(replace(proposal, buildable=False),))
     text = words(shown(plan=replace(example_plan(), stages=(replace(doubler(), name="d", filter=filter_plan),))))
-    assert "wider band" not in text
+    assert "Cheb 5" not in text
     assert "- d: nothing that was tried can be built" in text
 
 
@@ -141,7 +260,7 @@ def test_names_are_shown_as_they_are_and_cannot_steer_the_terminal():
 
 
 def test_a_pipe_gets_plain_text_of_eighty_columns(capsys):
-    terminal.show_plan(example_plan(), terminal.console())
+    terminal.show_plan(example_plan(), console())
     text = capsys.readouterr().out
     assert "\x1b" not in text
     assert max(map(len, text.splitlines())) <= 80

@@ -6,31 +6,15 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from harmonic_planner.report.text import decibels, filter_name, number_text, printable, quantity, span
-
-
-@pytest.mark.parametrize(
-    ("value", "unit", "digits", "expected"),
-    [
-        (2.4e9, "Hz", 4, "2.4 GHz"),
-        (612e6, "Hz", 4, "612 MHz"),
-        (0.5, "Hz", 4, "0.5 Hz"),
-        (127.0e-9, "H", 4, "127 nH"),
-        (0.199e-12, "F", 3, "0.199 pF"),
-        (4.7e-6, "H", 3, "4.7 µH"),
-        (0.0, "F", 3, "0 F"),
-        (math.inf, "Hz", 4, "–"),
-    ],
+from harmonic_planner.report.text import (
+    band_words,
+    circuit_words,
+    decibels,
+    filter_name,
+    is_one_sided,
+    printable,
+    span,
 )
-def test_quantity(value, unit, digits, expected):
-    assert quantity(value, unit, digits) == expected
-
-
-@given(st.floats(min_value=1e-3, max_value=1e12))
-def test_number_text_is_right_to_its_digits_and_has_no_exponent(value):
-    text = number_text(value, 4)
-    assert float(text) == pytest.approx(value, rel=0.51e-3)
-    assert "e" not in text
 
 
 @pytest.mark.parametrize(
@@ -62,3 +46,22 @@ def test_printable_text_is_one_printable_line_as_long_as_before(text):
 
 def test_printable_takes_the_escape_from_an_escape_sequence():
     assert printable("a\x1b[2Jb\nc") == "a?[2Jb c"
+
+
+def test_a_filter_is_named_with_the_value_that_its_topology_leaves_free_and_no_other():
+    assert circuit_words("chebyshev", 4, "capacitive", 27e-9) == "Cheb 4 capacitive with 27 nH"
+    assert circuit_words("butterworth", 3, "inductive", 6e-12) == "Butter 3 inductive with 6 pF"
+    assert circuit_words("butterworth", 3, "ladder-series", 27e-9) == "Butter 3 ladder-series"
+    assert circuit_words("butterworth", 3, None, None) == "Butter 3 prototype"
+
+
+def test_a_band_is_a_share_of_its_centre_and_a_low_pass_has_a_cut_off():
+    assert band_words("capacitive", bandwidth_hz=20e6, centre_hz=200e6) == "10.0 % at 200 MHz"
+    assert band_words("low-pass", bandwidth_hz=260e6, centre_hz=260e6) == "cut-off 260 MHz"
+    assert [is_one_sided(name) for name in ("low-pass", "high-pass", "ladder-shunt", "no such", None)] == [
+        True,
+        True,
+        False,
+        False,
+        False,
+    ]
