@@ -7,7 +7,6 @@ Modules that take long to import (numpy, matplotlib, pydantic and what needs the
 that help comes at once.
 """
 
-import importlib.resources
 import io
 import os
 import signal
@@ -25,13 +24,13 @@ from harmonic_planner.export import folder, new_file
 from harmonic_planner.export.folder import OutputWriteError
 from harmonic_planner.export.proposals import numbered_proposals
 from harmonic_planner.model import PlannerError, Scenario
+from harmonic_planner.shipped import SHIPPED, shipped_scenario
 from harmonic_planner.stopping import StoppedError, stopping_on_signals
 
 if TYPE_CHECKING:
     from harmonic_planner.planning.plan import WorkedOut
 
 PROGRAM = "harmonic-planner"
-SHIPPED = "glacier-sounder.toml"
 DEBUG = "HARMONIC_PLANNER_DEBUG"
 
 
@@ -73,7 +72,7 @@ def overview(
         raise typer.Exit(2)
 
 
-@app.command(epilog=_example("plan chain.toml --out chain-plan"))
+@app.command(epilog=_example("plan chain.toml --out chain-plan", "plan chain.toml --what-if"))
 def plan(
     scenario: Annotated[
         Path | None,
@@ -91,6 +90,14 @@ def plan(
             "Default: the scenario's name with -plan, in the current folder.",
         ),
     ] = None,
+    what_if: Annotated[
+        bool,
+        typer.Option(
+            "--what-if",
+            help="Also search what pads, balance, shields, a source filter or a resonator more or fewer would change, "
+            "and how wide the filters may be for more resonators. Takes seconds longer.",
+        ),
+    ] = False,
 ) -> int:
     """Plan a chain and write the plan, its tables and its figures.
 
@@ -98,7 +105,7 @@ def plan(
     """
     path = shipped_scenario() if scenario is None else scenario
     target = Path(f"{path.stem}-plan") if out is None else out
-    worked = _planned(path, before_planning=lambda: folder.check(target))
+    worked = _planned(path, before_planning=lambda: folder.check(target), what_if=what_if)
     result = worked.plan
 
     from harmonic_planner.report import terminal
@@ -312,45 +319,27 @@ def apply(
     return 0
 
 
-def _planned(path: Path, before_planning: Callable[[], None] = lambda: None) -> "WorkedOut":
+def _planned(
+    path: Path, before_planning: Callable[[], None] = lambda: None, *, what_if: bool = False
+) -> "WorkedOut":
     """Load a scenario and plan it; `before_planning` may raise once the scenario is known to be good."""
     from harmonic_planner.scenario import load
 
     scenario = load(path)
     before_planning()
-    return _worked_out(scenario, path)
+    return _worked_out(scenario, path, what_if=what_if)
 
 
-def _worked_out(scenario: Scenario, path: Path) -> "WorkedOut":
-    """Plan the scenario of a file, which is named where that fails."""
+def _worked_out(scenario: Scenario, path: Path, *, what_if: bool = False) -> "WorkedOut":
+    """Plan the scenario of a file, which is named where that fails; with what lies around the plan on request."""
+    from harmonic_planner.planning.explore import explored
     from harmonic_planner.planning.plan import work_out
 
     try:
-        return work_out(scenario)
+        worked = work_out(scenario)
+        return explored(scenario, worked) if what_if else worked
     except PlannerError as fault:
         raise PlannerError(f"{path}: {fault}") from fault
-
-
-def shipped_scenario() -> Path:
-    """Find the scenario that is planned when none is named.
-
-    Returns
-    -------
-    Path
-        Inside an installed package, or in the folder ``scenarios`` beside the package in a checkout.
-
-    Raises
-    ------
-    PlannerError
-        Where the installation lacks it.
-    """
-    package = importlib.resources.files("harmonic_planner")
-    installed = Path(str(package / "scenarios" / SHIPPED))
-    checkout = Path(str(package)).parent / "scenarios" / SHIPPED
-    for path in (installed, checkout):
-        if path.is_file():
-            return path
-    raise PlannerError(f"the shipped scenario {SHIPPED} is missing from this installation; name a scenario file")
 
 
 def main(arguments: Sequence[str] | None = None) -> int:

@@ -135,9 +135,9 @@ def _renormalised(s: Any, z0: Any, impedance_ohm: float, waves: str) -> Any:
     """Return S between two impedances alike, both `impedance_ohm`."""
     if np.allclose(z0, impedance_ohm, rtol=1e-12, atol=0):
         return s
-    import skrf
+    from skrf.network import renormalize_s
 
-    return skrf.renormalize_s(s, z0, np.full_like(z0, impedance_ohm), s_def=waves)
+    return renormalize_s(s, z0, np.full_like(z0, impedance_ohm), s_def=waves)
 
 
 def _check_ascending(frequency_hz: Any) -> None:

@@ -445,6 +445,68 @@ class AllocationPlan:
 
 
 @dataclass(frozen=True)
+class Holding:
+    """What keeps one stage's filter from doing with a resonator fewer."""
+
+    stage: str
+    resonators: int
+    line: Fraction | None
+    """The line that misses its limit first with one fewer, the other filters as they are; None where none does."""
+    at: str
+    """Where: the stage behind which it is judged, or ``output``."""
+    over_db: float | None
+    """By how much it is then beyond its limit, the margin asked for counted [dB]."""
+    bound: bool
+    """Whatever the other filters do, fewer are not enough."""
+    origins: tuple[Origin, ...]
+    """Of that line, then."""
+    text: str
+
+
+@dataclass(frozen=True)
+class Why:
+    """What holds the count of resonators up."""
+
+    sentence: str
+    stages: tuple[Holding, ...]
+
+
+@dataclass(frozen=True)
+class WhatIf:
+    """A change to the chain, for which the joint search was made again; not built."""
+
+    change: str
+    price: str
+    """What it costs, in words; empty where nothing is known of that."""
+    total_now: int
+    met_now: bool
+    margin_now_db: float
+    """Least margin over all limits, by the search's candidates at the corners of span and drift [dB]."""
+    total: int
+    """Resonators with the change; where `met` is False, of the choice that comes nearest."""
+    met: bool
+    margin_db: float
+    note: str = ""
+
+
+@dataclass(frozen=True)
+class TradePoint:
+    """The widest common bandwidth that so many resonators allow."""
+
+    total: int
+    factor: float
+    """Every stage's least bandwidth can be so many times what it has to be."""
+    bandwidth: float
+    """The least of these bandwidths, a fraction of the centre: every bandpass is at least so wide."""
+    widest_tried: bool
+    """More may be possible: no wider was tried."""
+    resonators: tuple[int, ...]
+    """By stage; 0 where nothing is planned."""
+    margin_db: float
+    """Least margin over all limits [dB]."""
+
+
+@dataclass(frozen=True)
 class Plan:
     """The whole answer; `plan.json` has these keys."""
 
@@ -465,6 +527,11 @@ class Plan:
     output: OutputPlan
     stages: tuple[StagePlan, ...]
     allocation: AllocationPlan | None = None
+    why: Why | None = None
+    """None where limits are not met, or nothing was planned."""
+    what_if: tuple[WhatIf, ...] = ()
+    """On request, and the trade below as well."""
+    trade: tuple[TradePoint, ...] = ()
 
     @property
     def exit_status(self) -> int:

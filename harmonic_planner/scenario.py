@@ -17,8 +17,10 @@ from harmonic_planner.model import (
     Device,
     GivenFilter,
     Isolation,
+    Limits,
     MaskBand,
     MeasuredFilter,
+    OffsetBand,
     Output,
     PlannerError,
     Scenario,
@@ -28,6 +30,7 @@ from harmonic_planner.model import (
 from harmonic_planner.scenario_checks import design_value, joint_problems, parts_of, stage_name
 from harmonic_planner.scenario_defaults import half_angle_deg, listed_defaults
 from harmonic_planner.scenario_problems import Problem, key_problems
+from harmonic_planner.scenario_rules import SM329
 from harmonic_planner.scenario_tables import (
     AmplifierTable,
     DesignTable,
@@ -36,6 +39,7 @@ from harmonic_planner.scenario_tables import (
     FilterTable,
     RejectionTable,
     StageTable,
+    TapTable,
     TouchstoneTable,
 )
 from harmonic_planner.template import TEMPLATE
@@ -206,16 +210,24 @@ def _scenario(document: Document, path: Path) -> Scenario:
             lines_dbc=dict(source.lines or {}),
             phase_noise=tuple(sorted((source.phase_noise or {}).items())),
         ),
-        output=Output(
-            limit_dbc=output.limit,
-            level_dbm=output.level,
-            mask=tuple(MaskBand(band.from_, band.to, band.limit) for band in output.mask or ()),
-        ),
+        output=Output(**_limits(output), level_dbm=output.level),
         design=_design(document.design),
         stages=tuple(_stage(i, stage, document.design, path) for i, stage in enumerate(document.stage)),
         defaults=tuple(listed_defaults(document)),
         folder=path.parent,
     )
+
+
+def _limits(table: TapTable) -> dict[str, Any]:
+    """Convert what is asked at a node to the fields of `Limits`."""
+    named = table.limit == SM329
+    return {
+        "limit_dbc": None if named else table.limit,
+        "mask": tuple(MaskBand(band.from_, band.to, band.limit) for band in table.mask or ()),
+        "offset_mask": tuple(OffsetBand(band.from_, band.to, band.limit) for band in table.offset_mask or ()),
+        "limit_dbm": table.limit_dbm,
+        "sm329_category_a": named,
+    }
 
 
 def _design(table: DesignTable, stage: StageTable | None = None) -> Design:
@@ -261,6 +273,7 @@ def _stage(i: int, table: StageTable, design: DesignTable, path: Path) -> Stage:
         amplifier=_amplifier(table.amplifier) if table.amplifier is not None else None,
         limit_dbc=table.limit,
         design=merged,
+        tap=Limits(**_limits(table.tap)) if table.tap is not None else None,
     )
 
 

@@ -19,9 +19,8 @@ from harmonic_planner.parts.kits import kit_names, load_kit
 from harmonic_planner.quantities import PERCENT, Reactance
 from harmonic_planner.rules import nearest
 from harmonic_planner.scenario_problems import SHAPES, Location, Problem
+from harmonic_planner.scenario_rules import ANY_LIMIT, GAIN
 from harmonic_planner.scenario_tables import (
-    GAIN,
-    LIMIT,
     DesignTable,
     FilterTable,
     OutputTable,
@@ -29,6 +28,7 @@ from harmonic_planner.scenario_tables import (
     SourceTable,
     StageTable,
     Table,
+    TapTable,
     TouchstoneTable,
 )
 
@@ -103,10 +103,13 @@ def joint_problems(raw: Mapping[str, Any], parts: Parts, *, folder: Path) -> Ite
     Problem
     """
     yield from _source_problems(raw, parts.source)
-    yield from _output_problems(parts.output)
+    if parts.output is not None:
+        yield from _limit_problems(("output",), parts.output)
     for i, stage in enumerate(parts.stages):
         if stage is not None:
             yield from _device_problems(i, stage)
+            if stage.tap is not None:
+                yield from _limit_problems(("stage", i, "tap"), stage.tap)
             yield from _filter_problems(i, stage)
             yield from _file_problems(i, stage, folder)
             if parts.design is not None and stage.filter == "plan":
@@ -123,14 +126,14 @@ def _source_problems(raw: Mapping[str, Any], source: SourceTable | None) -> Iter
         yield Problem(("source", "phase_noise"), "must name each offset once")
 
 
-def _output_problems(output: OutputTable | None) -> Iterator[Problem]:
-    if output is None:
-        return
-    if output.limit is None and not output.mask:
-        yield Problem(("output", "limit"), f"missing; must be {LIMIT.allowed}, unless a mask is given", False)
-    for i, band in enumerate(output.mask or ()):
-        if band.from_ >= band.to:
-            yield Problem(("output", "mask", i, "to"), "must be above the range's lower end, from")
+def _limit_problems(place: Location, table: TapTable) -> Iterator[Problem]:
+    if table.limit is None and table.limit_dbm is None and not table.mask and not table.offset_mask:
+        others = "unless mask, offset_mask or limit_dbm is given"
+        yield Problem((*place, "limit"), f"missing; must be {ANY_LIMIT.allowed}, {others}", False)
+    for key, bands in (("mask", table.mask), ("offset_mask", table.offset_mask)):
+        for i, band in enumerate(bands or ()):
+            if band.from_ >= band.to:
+                yield Problem((*place, key, i, "to"), "must be above the range's lower end, from")
 
 
 SHAPE_KEYS: Mapping[str, tuple[DeviceType, ...]] = {

@@ -63,6 +63,8 @@ def listed_defaults(document: Document) -> Iterator[str]:
         yield "source.phase_noise: none given, none reported"
     if document.output.level is None:
         yield "output.level: none asked for"
+    if document.output.limit is None:
+        yield "output.limit: none outside the masks" if document.output.limit_dbm is None else "output.limit: none"
     for name in DesignTable.model_fields:
         everywhere = all(name in stage.model_fields_set for stage in document.stage)
         if name not in document.design.model_fields_set and not everywhere:
@@ -76,7 +78,7 @@ def _stage_defaults(place: str, stage: StageTable, design: DesignTable) -> Itera
     if stage.device is not None:
         own_reflection = design_value("reflection", design, stage) is None
         yield from _device_defaults(f"{place}.device", stage.device, stage.times, own_reflection=own_reflection)
-    for name in ("pad", "pad_after", "limit", "amplifier"):
+    for name in ("pad", "pad_after", "limit", "tap", "amplifier"):
         if name not in stage.model_fields_set:
             yield f"{place}.{name}: none"
     if "filter" not in stage.model_fields_set:

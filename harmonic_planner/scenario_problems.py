@@ -16,21 +16,21 @@ from pydantic import ValidationError
 from pydantic.fields import FieldInfo
 
 from harmonic_planner.rules import Rule, nearest
+from harmonic_planner.scenario_rules import AMPLIFIER_LINE, DEVICE_LINE, SOURCE_LINE
 from harmonic_planner.scenario_tables import (
-    AMPLIFIER_LINE,
-    DEVICE_LINE,
-    SOURCE_LINE,
     AmplifierTable,
     DesignTable,
     DeviceTable,
     Document,
     FilterTable,
     MaskTable,
+    OffsetMaskTable,
     OutputTable,
     RejectionTable,
     SourceTable,
     StageTable,
     Table,
+    TapTable,
     TouchstoneTable,
 )
 
@@ -41,7 +41,9 @@ _BELONGS: Mapping[type[Table], str] = {
     Document: "at the top",
     SourceTable: "in [source]",
     OutputTable: "in [output]",
-    MaskTable: "in output.mask",
+    MaskTable: "in a mask",
+    OffsetMaskTable: "in an offset_mask",
+    TapTable: "in a stage's tap",
     DesignTable: "in [design]",
     StageTable: "in [[stage]]",
     DeviceTable: "in a stage's device",
@@ -54,6 +56,8 @@ _TABLES: Mapping[str, type[Table]] = {
     "source": SourceTable,
     "output": OutputTable,
     "mask": MaskTable,
+    "offset_mask": OffsetMaskTable,
+    "tap": TapTable,
     "design": DesignTable,
     "stage": StageTable,
     "device": DeviceTable,
@@ -69,6 +73,8 @@ SHAPES: Mapping[str, str] = {
     "design": 'a table: [design] with keys such as drift = "1 %"',
     "stage": "one or more tables, each headed [[stage]] in double brackets",
     "mask": 'a list of tables, [{ from = "1 GHz", to = "2 GHz", limit = "-70 dBc" }]',
+    "offset_mask": 'a list of tables, [{ from = "10 MHz", to = "100 MHz", limit = "-70 dBc" }]',
+    "tap": 'a table, { limit = "-60 dBc" }',
     "device": 'a table, { type = "push-push", conversion = "-9 dB" }',
     "amplifier": 'a table, { gain = "20 dB" }',
     "lines": 'a table, { "2" = "-40 dBc" }',
@@ -223,6 +229,6 @@ def _unknown(key: str, holder: type[Table]) -> str:
     if near:
         return f"unknown key; did you mean {near}?"
     homes = [place for table, place in _BELONGS.items() if key in _keys(table)]
-    if homes:
+    if homes and holder not in _FILTERS.values():
         return f"unknown key here; it belongs {' or '.join(homes)}"
     return f"unknown key; known here: {', '.join(_keys(holder))}"

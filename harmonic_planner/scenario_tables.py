@@ -6,14 +6,11 @@ the same text. A key that may be left out without a value to write for it has No
 
 from __future__ import annotations
 
-import re
-from dataclasses import dataclass
 from fractions import Fraction
-from typing import Annotated, Any, get_args
+from typing import Annotated, Any, Literal, get_args
 
 from pydantic import BaseModel, ConfigDict, Discriminator, Field, Tag
 
-from harmonic_planner.filters import topologies
 from harmonic_planner.model import BeyondSweep, DeviceClass, DeviceType, Family, Phases
 from harmonic_planner.quantities import (
     ANGLE,
@@ -27,116 +24,31 @@ from harmonic_planner.quantities import (
     REACTANCE,
     RESISTANCE,
     Either,
-    Kind,
     Pair,
     Reactance,
     Width,
     WidthRule,
 )
-from harmonic_planner.rules import Choice, Flag, Names, Number, Rule, Several, Text, nearest
-
-LAST_LINE = 100
-LARGEST_FACTOR = 12
-LARGEST_DENOMINATOR = 12
-
-
-# ------------------------------------------------------------------------------------------- rules of these tables
-
-
-@dataclass(frozen=True)
-class LineKey(Rule):
-    """A key of `lines`: a harmonic number, not the wanted line itself."""
-
-    fractions: bool
-    first: int
-
-    @property
-    def allowed(self) -> str:
-        """Words that follow "must be"."""
-        if self.fractions:
-            return f'a line such as "2" or "1/2" in lowest terms, up to {LAST_LINE}, and not "1", the carrier'
-        return f"a harmonic number, a whole number from {self.first} to {LAST_LINE}"
-
-    def parse(self, value: object) -> Fraction | int:
-        """Read a line's name."""
-        if not isinstance(value, str) or re.fullmatch(r"[1-9][0-9]{0,2}(/[1-9][0-9]?)?", value) is None:
-            raise self.refuse()
-        line = Fraction(value)
-        if str(line) != value or line > LAST_LINE or line.denominator > LARGEST_DENOMINATOR:
-            raise self.refuse()
-        if line == 1 if self.fractions else line.denominator > 1 or line < self.first:
-            raise self.refuse()
-        return line if self.fractions else int(line)
-
-    def schema(self) -> dict[str, Any]:
-        """Return the JSON Schema of it."""
-        return {"type": "string", "pattern": "^[1-9][0-9]*(/[1-9][0-9]*)?$" if self.fractions else "^[1-9][0-9]*$"}
-
-
-@dataclass(frozen=True)
-class TopologyRule(Rule):
-    """A circuit's name; with `several` also "auto", the name of a group of circuits, or a list of names."""
-
-    several: bool
-
-    @property
-    def words(self) -> tuple[str, ...]:
-        """Names that may stand here or in a list."""
-        groups = tuple(name for name in topologies.ALIASES if name != "auto") if self.several else ()
-        return (*topologies.REGISTRY, *groups)
-
-    @property
-    def allowed(self) -> str:
-        """Words that follow "must be"."""
-        if self.several:
-            return '"auto", ' + ", ".join(f'"{w}"' for w in self.words) + ", or a list of these names"
-        return Choice(self.words).allowed
-
-    def parse(self, value: object) -> Any:
-        """Read a name, or a list of names."""
-        names = value if self.several and isinstance(value, list) else [value]
-        if self.several and value == "auto":
-            return ("auto",)
-        for name in names:
-            if name not in self.words:
-                near = nearest(name, self.words) if isinstance(name, str) else None
-                raise self.refuse(f'did you mean "{near}"?' if near else "")
-        if not names or len(set(names)) != len(names):
-            raise self.refuse("each once")
-        return tuple(names) if self.several else value
-
-    def schema(self) -> dict[str, Any]:
-        """Return the JSON Schema of it."""
-        one = Choice(self.words).schema()
-        if not self.several:
-            return one
-        return {"anyOf": [{"const": "auto"}, one, {"type": "array", "items": one, "minItems": 1, "uniqueItems": True}]}
-
-
-@dataclass(frozen=True)
-class FilterWord(Choice):
-    """The words that stand in place of a given filter's table."""
-
-    words: tuple[str, ...] = ("plan", "none")
-
-    @property
-    def allowed(self) -> str:
-        """Words that follow "must be"."""
-        return '"plan", "none" or a table { family, order, centre, bandwidth }, { touchstone } or { table }'
-
-
-GAIN = Kind("a gain", "dB", "-9 dB", -80.0, 40.0)
-RIPPLE = RATIO_DB.between(0.01, 0.5, example="0.1 dB")
-REFLECTION = Number(0, 1, below=True)
-QUALITY = Number(1, 1e6)
-ORDER = Number(1, 9, whole=True)
-SHARE = PERCENT.between(0, 100, above=True)
-FILE = Text("the path of a file", 300)
-LIMIT = LINE_DBC.between(-250, 0, below=True, example="-60 dBc")
-SOURCE_LINE = LineKey(fractions=True, first=1)
-DEVICE_LINE = LineKey(fractions=False, first=1)
-AMPLIFIER_LINE = LineKey(fractions=False, first=2)
-
+from harmonic_planner.rules import Choice, Flag, Names, Number, Several, Text
+from harmonic_planner.scenario_rules import (
+    AMPLIFIER_LINE,
+    ANY_LIMIT,
+    DEVICE_LINE,
+    FILE,
+    GAIN,
+    LARGEST_FACTOR,
+    LIMIT,
+    LIMIT_DBM,
+    ORDER,
+    QUALITY,
+    REFLECTION,
+    RIPPLE,
+    SEPARATION,
+    SHARE,
+    SOURCE_LINE,
+    FilterWord,
+    TopologyRule,
+)
 
 # ------------------------------------------------------------------------------------------------- kinds of keys
 
@@ -192,12 +104,33 @@ class MaskTable(Table):
     limit: Annotated[float, LIMIT] = _need("Limit of every unwanted line in the range, relative to the carrier")
 
 
-class OutputTable(Table):
+class OffsetMaskTable(MaskTable):
+    """A range of the offset from the carrier, on both sides, in which another limit holds."""
+
+    from_: Annotated[float, SEPARATION] = Field(alias="from", description="Least distance from the carrier")
+    to: Annotated[float, SEPARATION] = _need("Largest distance from the carrier")
+
+
+class TapTable(Table):
+    """What is asked of another output, behind a stage."""
+
+    limit: Annotated[float | Literal["SM.329 category A"] | None, ANY_LIMIT] = _maybe(
+        "Limit of every unwanted line, or that of Recommendation ITU-R SM.329, category A, for emission at an antenna; "
+        "required unless mask, offset_mask or limit_dbm is given"
+    )
+    limit_dbm: Annotated[float | None, LIMIT_DBM] = _maybe(
+        "Absolute limit of every unwanted line, beside all others; default: none"
+    )
+    mask: list[MaskTable] | None = _maybe("Ranges in which another limit replaces the general one; default: none")
+    offset_mask: list[OffsetMaskTable] | None = _maybe(
+        "Ranges of the offset from the carrier in which another limit replaces the general one; default: none"
+    )
+
+
+class OutputTable(TapTable):
     """What is asked of the last node."""
 
     level: Annotated[float | None, LEVEL_DBM] = _maybe("Level asked for, a warning beyond 2 dB; default: none")
-    limit: Annotated[float | None, LIMIT] = _maybe("Limit of every unwanted line; required unless a mask is given")
-    mask: list[MaskTable] | None = _maybe("Ranges in which another limit replaces the general one; default: none")
 
 
 class DesignTable(Table):
@@ -359,6 +292,7 @@ class StageTable(DesignTable):
     pad: Annotated[float | None, RATIO_DB] = _maybe("Pad between multiplier and filter; default: none")
     pad_after: Annotated[float | None, RATIO_DB] = _maybe("Pad behind the filter; default: none")
     limit: Annotated[float | None, LIMIT] = _maybe("Limit of every unwanted line at this stage's output; default: none")
+    tap: TapTable | None = _maybe("Limits of another output, tapped behind this stage; default: none")
     filter: Annotated[
         Annotated[FilterTable, Tag("described")]
         | Annotated[TouchstoneTable, Tag("touchstone")]

@@ -24,6 +24,10 @@ limit = "-50 dBc"
 #level = "-10 dBm"
 # Ranges in which another limit replaces the general one.
 #mask = [{ from = "140 MHz", to = "160 MHz", limit = "-55 dBc" }]
+# The same for ranges of the offset from the carrier, on both sides.
+#offset_mask = [{ from = "0 Hz", to = "60 MHz", limit = "-60 dBc" }]
+# An absolute limit, which stands beside the others.
+#limit_dbm = "-55 dBm"
 
 # What every filter is designed to; a stage may carry any of these keys for itself.
 [design]
@@ -81,6 +85,8 @@ pad_after = "6 dB"
 filter = "plan"
 # Limit of every unwanted line at this stage's own output.
 #limit = "-20 dBc"
+# Another output, tapped behind this stage, with limits of its own as in [output].
+#tap = { limit = "-20 dBc", mask = [{ from = "20 MHz", to = "60 MHz", limit = "-25 dBc" }] }
 
 [stage.device]
 # single-ended, push-push (even lines), push-pull (odd lines), limiter, or power-law.

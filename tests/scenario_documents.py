@@ -27,6 +27,10 @@ def amplifier(keys):
     return document(stage=f"times = 2\n{DEVICE}\namplifier = {{ {keys} }}")
 
 
+def tap(keys):
+    return document(stage=f"times = 2\n{DEVICE}\ntap = {{ {keys} }}")
+
+
 def read(text):
     return loads(text, path=HERE)
 
@@ -42,6 +46,8 @@ phase_noise = { "100 kHz" = "-165 dBc/Hz", "1 kHz" = "-150 dBc/Hz" }
 level = "3 dBm"
 limit = "-70 dBc"
 mask = [{ from = "2.3 GHz", to = "2.5 GHz", limit = "-75 dBc" }]
+offset_mask = [{ from = "0 Hz", to = "10 MHz", limit = "-80 dBc" }]
+limit_dbm = "-50 dBm"
 [design]
 impedance = "75 Ω"
 kit = ["chip-1008", "air-wound"]
@@ -77,6 +83,7 @@ kit = "chip-0805"
 order = "auto"
 bandwidth = "auto"
 resonator = "6 pF"
+tap = { limit = "SM.329 category A", limit_dbm = "-40 dBm", mask = [{ from = "1 GHz", to = "2 GHz", limit = "-20 dBc" }] }
 [stage.device]
 type = "push-push"
 half_angle = "75 deg"

@@ -1,6 +1,6 @@
 """Scenarios that are refused, and the exact words; wordings are regression: our own."""
 
-from scenario_documents import DEVICE, amplifier, device, document, given_filter
+from scenario_documents import DEVICE, amplifier, device, document, given_filter, tap
 
 from harmonic_planner.filters.topologies import ALIASES, REGISTRY
 from harmonic_planner.parts.kits import kit_names
@@ -20,6 +20,8 @@ REFUSED = {
     "no device type": device('conversion = "-9 dB"'),
     "no conversion": device('type = "limiter"'),
     "no gain": amplifier(""),
+    "tap without limit": tap(""),
+    "offset mask without limit": document(output='offset_mask = [{ from = "1 MHz", to = "2 MHz" }]'),
     "mask without limit": document(output='mask = [{ from = "1 GHz", to = "2 GHz" }]'),
     "filter without order": given_filter('family = "butterworth", centre = "200 MHz", bandwidth = "10 %"'),
     # units and sizes
@@ -35,6 +37,17 @@ REFUSED = {
     "dB for dBm": document(source='frequency = "1 MHz"\nlevel = "10 dB"'),
     "TOML nan": document(source='frequency = "1 MHz"\nlevel = nan'),
     "limit above the carrier": document(output='limit = "60 dBc"'),
+    "limit in dBm under the key for dBc": document(output='limit = "-30 dBm"'),
+    "absolute limit in dBc": document(output='limit_dbm = "-30 dBc"'),
+    "absolute limit as a number": document(output="limit_dbm = -30"),
+    "category B": document(output='limit = "SM.329 category B"'),
+    "category as a mask's limit": document(
+        output='mask = [{ from = "1 GHz", to = "2 GHz", limit = "SM.329 category A" }]'
+    ),
+    "category as a stage's limit": document(stage=f'times = 2\n{DEVICE}\nlimit = "SM.329 category A"'),
+    "negative offset": document(output='offset_mask = [{ from = "-1 MHz", to = "2 MHz", limit = "-60 dBc" }]'),
+    "tap as a level": document(stage=f'times = 2\n{DEVICE}\ntap = "-60 dBc"'),
+    "offset mask as one table": document(output='offset_mask = { from = "1 MHz", to = "2 MHz", limit = "-60 dBc" }'),
     "limit as a number": document(output="limit = -60"),
     "prefix on dB": document(design='loss = "3 mdB"'),
     "bare dB number": document(design="margin = 3"),
@@ -122,15 +135,26 @@ REFUSED = {
     "misspelt table": document() + "\n[sorce]\n",
     "hyphen for underscore": document(design='min-bandwidth = "10 %"'),
     "key of another table": document(design='pad = "3 dB"'),
+    "level of a tap": tap('limit = "-60 dBc", level = "3 dBm"'),
+    "unknown in an offset mask": document(
+        output='offset_mask = [{ from = "1 GHz", to = "2 GHz", limit = "-60 dBc", side = "above" }]'
+    ),
     "unknown in a mask": document(output='mask = [{ from = "1 GHz", to = "2 GHz", limit = "-60 dBc", level = 1 }]'),
     "spurs": document(source='frequency = "1 MHz"\nspurs = []'),
-    "touchstone": given_filter('touchstone = "x.s2p"'),
+    "no file": given_filter('touchstone = "no such file.s2p"'),
+    "no table": given_filter('table = "no such file.csv"'),
+    "file as a number": given_filter("touchstone = 3"),
+    "order of a measured filter": given_filter('touchstone = "no such file.s2p", order = 3'),
+    "file and table": given_filter('touchstone = "no such file.s2p", table = "no such file.csv"'),
+    "beyond the sweep": given_filter('table = "no such file.csv", beyond_sweep = "ignore"'),
     "measured": device('type = "push-push", conversion = "-9 dB", measured = "x.csv"'),
     # between keys
     "device in a clean-up stage": document(stage=f"times = 1\n{DEVICE}"),
     "half-angle of a limiter": device('type = "limiter", conversion = "-9 dB", half_angle = "60 deg"'),
     "balance of a single-ended device": device('type = "single-ended", conversion = "-9 dB", balance = "20 dB"'),
     "steepness of a push-push": device('type = "push-push", conversion = "-9 dB", steepness = 3'),
+    "offset mask upside down": document(output='offset_mask = [{ from = "10 MHz", to = "10 MHz", limit = "-60 dBc" }]'),
+    "mask of a tap upside down": tap('mask = [{ from = "2 GHz", to = "1 GHz", limit = "-60 dBc" }]'),
     "mask upside down": document(output='mask = [{ from = "2 GHz", to = "1 GHz", limit = "-60 dBc" }]'),
     "ripple above the flatness": document(design='ripple = "0.3 dB"\nflatness = "0.2 dB"'),
     "flatness of a stage below the ripple": document(stage=f'times = 2\n{DEVICE}\nflatness = "0.05 dB"'),
@@ -172,6 +196,9 @@ SPAN = 'must be a frequency from 1 kHz to 1 THz, such as "600 MHz", or a span ["
 BAND = 'must be a frequency from 1 Hz to 1 THz, such as "60 MHz", or a percentage above 0 % up to 100 %, such as "10 %"'
 FREQUENCY = 'must be a frequency from 1 kHz to 1 THz, such as "600 MHz"'
 LIMIT = 'must be a level from -250 dBc to below 0 dBc, such as "-60 dBc"'
+ANY_LIMIT = f'{LIMIT}, or "SM.329 category A"'
+LIMIT_DBM = 'must be a level from -150 dBm to 80 dBm, such as "-30 dBm"'
+OTHERS = "unless mask, offset_mask or limit_dbm is given"
 LEVEL = 'must be a level from -150 dBm to 80 dBm, such as "10 dBm"'
 TIMES = "must be a whole number from 1 to 12"
 ORDER = "must be a whole number from 1 to 9"
@@ -204,7 +231,7 @@ EXPECTED = {
     "no stage": [f"stage: missing; {STAGES}"],
     "empty stage list": ["stage: must be 1 to 12 tables [[stage]]; there are 0"],
     "no frequency": [f"source.frequency: missing; {SPAN}"],
-    "no limit": [f"output.limit: missing; {LIMIT}, unless a mask is given"],
+    "no limit": [f"output.limit: missing; {ANY_LIMIT}, {OTHERS}"],
     "no times": [f"stage[1].times: missing; {TIMES}"],
     "no device": [f"stage[1].device: missing; {DEVICE_TABLE}, unless times is 1"],
     "no device type": [f"stage[1].device.type: missing; {TYPE}"],
@@ -213,6 +240,8 @@ EXPECTED = {
         "except for power-law"
     ],
     "no gain": ['stage[1].amplifier.gain: missing; must be a gain from -40 dB to 80 dB, such as "20 dB"'],
+    "tap without limit": [f"stage[1].tap.limit: missing; {ANY_LIMIT}, {OTHERS}"],
+    "offset mask without limit": [f"output.offset_mask[1].limit: missing; {LIMIT}"],
     "mask without limit": [f"output.mask[1].limit: missing; {LIMIT}"],
     "filter without order": [f"stage[1].filter.order: missing; {ORDER}"],
     "lower-case unit": [
@@ -231,8 +260,28 @@ EXPECTED = {
     "span of three": [f'source.frequency = ["1 MHz", "2 MHz", "3 MHz"]: {SPAN}'],
     "dB for dBm": [f'source.level = "10 dB": {LEVEL}; the unit "dB" is not dBm, upper and lower case count'],
     "TOML nan": [f"source.level = nan: {LEVEL}; {PLAIN}"],
-    "limit above the carrier": [f'output.limit = "60 dBc": {LIMIT}'],
-    "limit as a number": [f"output.limit = -60: {LIMIT}; {PLAIN}"],
+    "limit above the carrier": [f'output.limit = "60 dBc": {ANY_LIMIT}'],
+    "limit in dBm under the key for dBc": [
+        f'output.limit = "-30 dBm": {ANY_LIMIT}; the unit "dBm" is not dBc, upper and lower case count'
+    ],
+    "absolute limit in dBc": [
+        f'output.limit_dbm = "-30 dBc": {LIMIT_DBM}; the unit "dBc" is not dBm, upper and lower case count'
+    ],
+    "absolute limit as a number": [f"output.limit_dbm = -30: {LIMIT_DBM}; {PLAIN}"],
+    "category B": [f'output.limit = "SM.329 category B": {ANY_LIMIT}; not a number followed by a unit'],
+    "category as a mask's limit": [
+        f'output.mask[1].limit = "SM.329 category A": {LIMIT}; not a number followed by a unit'
+    ],
+    "category as a stage's limit": [f'stage[1].limit = "SM.329 category A": {LIMIT}; not a number followed by a unit'],
+    "negative offset": [
+        'output.offset_mask[1].from = "-1 MHz": must be an offset from 0 Hz to 1 THz, such as "10 MHz"'
+    ],
+    "tap as a level": ['stage[1].tap = "-60 dBc": must be a table, { limit = "-60 dBc" }'],
+    "offset mask as one table": [
+        'output.offset_mask = { from = "1 MHz", to = "2 MHz", limit = "-60 dBc" }: must be a list of tables, '
+        '[{ from = "10 MHz", to = "100 MHz", limit = "-70 dBc" }]'
+    ],
+    "limit as a number": [f"output.limit = -60: {ANY_LIMIT}; {PLAIN}"],
     "prefix on dB": [
         (
             'design.loss = "3 mdB": must be a ratio above 0 dB up to 60 dB, such as "6 dB"; the unit "mdB" '
@@ -256,7 +305,7 @@ EXPECTED = {
     "order 10": [f"design.max_order = 10: {ORDER}"],
     "list where a number belongs": [f"design.max_order = [9]: {ORDER}"],
     "number where a table belongs": [f"stage[1].device = 3: {DEVICE_TABLE}"],
-    "table where a level belongs": [f'output.limit = {{ level = "-60 dBc" }}: {LIMIT}'],
+    "table where a level belongs": [f'output.limit = {{ level = "-60 dBc" }}: {ANY_LIMIT}'],
     "one family as text": [f'design.families = "chebyshev": {FAMILIES}'],
     "no family": [f"design.families = []: {FAMILIES}"],
     "tuned in quotes": ['design.tuned = "yes": must be true or false, without quotes'],
@@ -332,7 +381,8 @@ EXPECTED = {
         )
     ],
     "unknown filter": [
-        ('stage[1].filter = "auto": must be "plan", "none" or a table { family, order, centre, bandwidth }')
+        'stage[1].filter = "auto": must be "plan", "none" or a table { family, order, centre, bandwidth }, '
+        "{ touchstone } or { table }"
     ],
     "given filter, unknown family": [f'stage[1].filter.family = "elliptic": {FAMILY}'],
     "carrier among the lines": [f"source.lines.1: the key {LINE}"],
@@ -355,18 +405,24 @@ EXPECTED = {
     "misspelt table": ["sorce: unknown key; did you mean source?"],
     "hyphen for underscore": ["design.min-bandwidth: unknown key; did you mean min_bandwidth?"],
     "key of another table": ["design.pad: unknown key here; it belongs in [[stage]]"],
+    "level of a tap": ["stage[1].tap.level: unknown key here; it belongs in [source] or in [output]"],
+    "unknown in an offset mask": ["output.offset_mask[1].side: unknown key; known here: from, to, limit"],
     "unknown in a mask": ["output.mask[1].level: unknown key here; it belongs in [source] or in [output]"],
     "spurs": ["source.spurs: unknown key; known here: frequency, level, lines, phase_noise"],
-    "touchstone": [
-        f"stage[1].filter.family: missing; {FAMILY}",
-        f"stage[1].filter.order: missing; {ORDER}",
-        f"stage[1].filter.centre: missing; {FREQUENCY}",
-        f"stage[1].filter.bandwidth: missing; {BAND}",
-        (
-            "stage[1].filter.touchstone: unknown key; known here: family, order, centre, bandwidth, ripple, "
-            "topology, unloaded_q"
-        ),
+    "no file": [
+        'stage[1].filter.touchstone = "no such file.s2p": must be the path of a Touchstone file of two ports; there is '
+        "no such file"
     ],
+    "no table": [
+        'stage[1].filter.table = "no such file.csv": must be the path of a CSV file with frequency and rejection; there '
+        "is no such file"
+    ],
+    "file as a number": [
+        "stage[1].filter.touchstone = 3: must be the path of a file: one line of text of 1 to 300 characters"
+    ],
+    "order of a measured filter": ["stage[1].filter.order: unknown key; known here: touchstone, beyond_sweep"],
+    "file and table": ["stage[1].filter.table: unknown key; known here: touchstone, beyond_sweep"],
+    "beyond the sweep": ['stage[1].filter.beyond_sweep = "ignore": must be one of "refuse", "no-rejection"'],
     "measured": [
         (
             "stage[1].device.measured: unknown key; known here: type, conversion, half_angle, balance, "
@@ -391,6 +447,8 @@ EXPECTED = {
     "steepness of a push-push": [
         "stage[1].device.steepness = 3: must be left out for push-push: it shapes limiter only"
     ],
+    "offset mask upside down": ['output.offset_mask[1].to = "10 MHz": must be above the range\'s lower end, from'],
+    "mask of a tap upside down": ['stage[1].tap.mask[1].to = "1 GHz": must be above the range\'s lower end, from'],
     "mask upside down": ['output.mask[1].to = "1 GHz": must be above the range\'s lower end, from'],
     "ripple above the flatness": ['design.flatness = "0.2 dB": must be at least the ripple, 0.3 dB'],
     "flatness of a stage below the ripple": ['stage[1].flatness = "0.05 dB": must be at least the ripple, 0.1 dB'],

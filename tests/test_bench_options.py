@@ -159,5 +159,5 @@ def test_what_is_written_is_read(low, ratio, rejection):
 def test_a_text_that_is_no_quantity_is_refused_with_what_is_allowed(text):
     assume(not any(character.isdigit() for character in text))
     for reader in (span, line):
-        with pytest.raises(RefusedError, match="^must be a frequency"):
+        with pytest.raises(RefusedError, match=r"^must be a frequency"):
             reader(text)

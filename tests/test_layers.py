@@ -14,13 +14,18 @@ ROOMS = ("model", "physics", "parts", "filters", "chain", "planning", "export", 
 ROOM_OF_MODULE = {
     "__main__": "cli",
     "applying": "scenario",
+    "column_files": "scenario",
+    "measured_files": "scenario",
+    "measured_lines": "scenario",
     "quantities": "scenario",
     "rules": "scenario",
     "scenario_checks": "scenario",
     "scenario_defaults": "scenario",
     "scenario_problems": "scenario",
+    "scenario_rules": "scenario",
     "scenario_tables": "scenario",
     "bench_options": "scenario",
+    "shipped": "cli",
     "stopping": "cli",
     "template": "scenario",
 }
@@ -34,6 +39,7 @@ ALLOWED_OUTSIDE = {
     "pandas": {"export"},
     "pydantic": {"parts", "scenario"},
     "quantiphy": {"parts", "scenario"},
+    "skrf": {"export", "scenario"},
     "tomlkit": {"scenario"},
 }
 """Libraries for people's side of the program, and the rooms that may use them."""

@@ -12,7 +12,17 @@ from pathlib import Path
 import pytest
 from scenario_documents import DEVICE, FULL, amplifier, device, document, given_filter, read
 
-from harmonic_planner.model import Amplifier, Design, Device, GivenFilter, Isolation, MaskBand
+from harmonic_planner.model import (
+    Amplifier,
+    Design,
+    Device,
+    GivenFilter,
+    Isolation,
+    Limits,
+    MaskBand,
+    OffsetBand,
+    Output,
+)
 from harmonic_planner.parts.kits import kit_names
 from harmonic_planner.scenario import ScenarioError, load
 from harmonic_planner.scenario_tables import DesignTable, StageTable
@@ -95,6 +105,8 @@ def test_every_key_arrives_in_SI():
     assert scenario.output.level_dbm == 3.0
     assert scenario.output.limit_dbc == -70.0
     assert scenario.output.mask == (MaskBand(2.3e9, 2.5e9, -75.0),)
+    assert scenario.output.offset_mask == (OffsetBand(0.0, 10e6, -80.0),)
+    assert (scenario.output.limit_dbm, scenario.output.sm329_category_a) == (-50.0, False)
     design = Design(
         impedance_ohm=75.0,
         kits=("chip-1008", "air-wound"),
@@ -118,6 +130,8 @@ def test_every_key_arrives_in_SI():
     )
     assert scenario.design == design
     first, second, third = scenario.stages
+    assert first.tap == Limits(mask=(MaskBand(1e9, 2e9, -20.0),), limit_dbm=-40.0, sm329_category_a=True)
+    assert second.tap is None
     assert first.device == Device(
         type="push-push",
         conversion_db=-9.0,
@@ -180,10 +194,22 @@ def test_bandwidth_of_a_given_filter(bandwidth, width_hz):
     assert (chosen.topology, chosen.unloaded_q) == (None, None)
 
 
-def test_a_mask_can_stand_alone():
-    output = read(document(output='mask = [{ from = "1 GHz", to = "2 GHz", limit = "-60 dBc" }]')).output
-    assert output.limit_dbc is None
-    assert len(output.mask) == 1
+BAND = '[{ from = "1 GHz", to = "2 GHz", limit = "-60 dBc" }]'
+
+
+@pytest.mark.parametrize(
+    "keys, expected",
+    [
+        (f"mask = {BAND}", Output(mask=(MaskBand(1e9, 2e9, -60.0),))),
+        (f"offset_mask = {BAND}", Output(offset_mask=(OffsetBand(1e9, 2e9, -60.0),))),
+        ('limit_dbm = "-30 dBm"', Output(limit_dbm=-30.0)),
+        ('limit = "SM.329 category A"', Output(sm329_category_a=True)),
+    ],
+)
+def test_any_kind_of_limit_can_stand_alone(keys, expected):
+    assert read(document(output=keys)).output == expected
+    tap = read(document(stage=f"times = 2\n{DEVICE}\ntap = {{ {keys} }}")).stages[0].tap
+    assert tap == Limits(expected.limit_dbc, expected.mask, expected.offset_mask, expected.limit_dbm, "SM" in keys)
 
 
 # -------------------------------------------------------------------------------------------------------- defaults
@@ -244,6 +270,7 @@ def test_every_default_is_listed():
         "stage[1].pad: none",
         "stage[1].pad_after: none",
         "stage[1].limit: none",
+        "stage[1].tap: none",
         "stage[1].filter = plan",
         "stage[1].amplifier.saturation: none, linear",
         "stage[1].amplifier.noise_figure: not counted",
@@ -258,6 +285,7 @@ def test_what_is_given_is_not_listed():
         "stage[2].pad: none",
         "stage[2].pad_after: none",
         "stage[2].limit: none",
+        "stage[2].tap: none",
         "stage[2].amplifier: none",
         "stage[3].device.class = resistive",
         "stage[3].device.drive: no window, none checked; the planned level is nominal",
@@ -265,9 +293,23 @@ def test_what_is_given_is_not_listed():
         "stage[3].pad: none",
         "stage[3].pad_after: none",
         "stage[3].limit: none",
+        "stage[3].tap: none",
         "stage[3].amplifier: none",
         "stage[3].filter = plan",
     )
+
+
+@pytest.mark.parametrize(
+    "keys, text",
+    [
+        (f"mask = {BAND}", "output.limit: none outside the masks"),
+        ('limit_dbm = "-30 dBm"', "output.limit: none"),
+        ('limit = "SM.329 category A"', None),
+    ],
+)
+def test_a_limit_that_is_left_out_is_listed(keys, text):
+    listed = [x for x in read(document(output=keys)).defaults if x.startswith("output.limit")]
+    assert listed == ([text] if text else [])
 
 
 def test_a_default_that_every_stage_overrides_shaped_nothing():

@@ -6,7 +6,7 @@ import sys
 import tomllib
 
 import pytest
-from scenario_documents import FULL, device, document, given_filter, read
+from scenario_documents import FULL, device, document, given_filter, read, tap
 from scenario_refusals import REFUSED
 
 from harmonic_planner.scenario import TEMPLATE, json_schema
@@ -108,6 +108,8 @@ VALID = {
     "isolation none": document(design='isolation = "none"\nmin_bandwidth = "kit"\ntopology = "ladder"'),
     "fixed": document(design='order = 3\nbandwidth = "9 %"\nresonator = "0.1 µH"\nkit = ["chip-0402", "chip-0603"]'),
     "resonators": document(design='topology = ["capacitive", "ladder"]\nresonator = "8 nH"'),
+    "limits": document(output='limit = "SM.329 category A"\nlimit_dbm = "-30 dBm"'),
+    "tap": tap('offset_mask = [{ from = "0 Hz", to = "1 GHz", limit = "-60 dBc" }]'),
     "power-law": device('type = "power-law"'),
     "given": given_filter('family = "butterworth", order = 3, centre = "200 MHz", bandwidth = "60 MHz"'),
 }
@@ -128,6 +130,11 @@ def test_valid_documents_are_read_and_fit_the_schema(case):
         "lower-case unit",
         "number for frequency",
         "prefix on dB",
+        "absolute limit in dBc",
+        "category B",
+        "category as a stage's limit",
+        "offset mask without limit",
+        "tap as a level",
         "times = 0",
         "times true",
         "order 10",

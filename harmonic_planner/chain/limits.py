@@ -1,8 +1,8 @@
 """The limits asked at a node, as one level for each line relative to the carrier there.
 
-A general limit (dBc, or that of Recommendation ITU-R SM.329, category A) holds everywhere but in the bands of a mask over
-frequency or over the offset from the carrier, which replace it; a limit in dBm stands beside all of them. A line and the
-carrier move together over the span of the source, and the strictest limit that the line meets on its way holds.
+A general limit (dBc, or that of Recommendation ITU-R SM.329, category A) holds everywhere but in the bands of a mask
+over frequency or over the offset from the carrier, which replace it; a limit in dBm stands beside all of them. A line
+and the carrier move together over the span of the source, and the strictest limit that the line meets on its way holds.
 """
 
 from __future__ import annotations

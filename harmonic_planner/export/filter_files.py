@@ -101,8 +101,10 @@ def filter_files(
     names = filter_names(stem)
     edges = [edge for span in (carrier_hz, *lines_hz.values()) for edge in span]
     sweep_hz = (min(edges) / BEYOND, max(edges) * BEYOND)
-    low, high = sweep_hz if present_hz is None else present_hz
-    whole_hz = (min(sweep_hz[0], low / BEYOND_PRESENT), max(sweep_hz[1], high * BEYOND_PRESENT))
+    whole_hz = sweep_hz
+    if present_hz is not None:
+        low, high = present_hz
+        whole_hz = (min(sweep_hz[0], low / BEYOND_PRESENT), max(sweep_hz[1], high * BEYOND_PRESENT))
     points = max(LEAST_POINTS, math.ceil(math.log(whole_hz[1] / whole_hz[0]) / WIDEST_STEP) + 1)
     frequency = frequencies_hz(carrier_hz, lines_hz.values(), passband_hz=passband_hz, sweep_hz=whole_hz, points=points)
     forward, backward = (sweep_built(c, frequency, kit=kit) for c in (circuit, circuit.reversed()))

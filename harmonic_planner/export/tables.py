@@ -130,9 +130,9 @@ def elements_csv(plan: Plan) -> str:
     Returns
     -------
     str
-        CSV, one row per element: its value by design, with strays absorbed, and as bought, in `unit` (H or F); two parts
-        in parallel as text, ``10 pF + 2.2 pF``, and each by itself; strays' share as a fraction; what it bears at the
-        carrier and may bear [V peak, A rms]; the verdict and its reason.
+        CSV, one row per element: its value by design and as built, in `unit` (H or F); what is bought for it as text,
+        ``10 pF + 2.2 pF`` where two parts stand in parallel, and as numbers; strays' share as a fraction; what it bears
+        at the carrier and may bear [V peak, A rms]; the verdict and its reason.
     """
     columns = (
         "stage_number",

@@ -2,9 +2,9 @@
 
 Category A asks that every spurious emission be attenuated below the power supplied to the antenna's line by
 43 + 10 log10 P dB, P in watts, or by 70 dB, whichever is less stringent. The first is −13 dBm whatever the power; the
-second takes over from 500 W. It holds for all services but those that the recommendation lists with values of their own
-(space services, radiodetermination, broadcasting, amateurs and others), and beyond 250 % of the necessary bandwidth from
-the carrier. A single line lies in one reference bandwidth whole, so its level is what is compared.
+second takes over from 500 W. It holds for all services but those that the recommendation lists with values of their
+own (space services, radiodetermination, broadcasting, amateurs and others), and beyond 250 % of the necessary bandwidth
+from the carrier. A single line lies in one reference bandwidth whole, so its level is what is compared.
 
 References
 ----------

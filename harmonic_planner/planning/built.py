@@ -38,6 +38,14 @@ class Form:
     impedance_ohm: float
     resonator: float | None = None
 
+    @property
+    def resonator_text(self) -> str:
+        """The free resonator value with its unit; empty where nothing is free."""
+        free = REGISTRY[self.topology].free
+        if self.resonator is None or free is None:
+            return ""
+        return readable(self.resonator, "H" if free == "L" else "F")
+
 
 @dataclass(frozen=True)
 class Built:

@@ -249,13 +249,7 @@ def _described(built: Built) -> str:
     form = built.form
     words = f"{form.topology} order {built.prototype.order}"
     words += f" at {built.centre_hz / 1e6:.4g} MHz" if built.one_sided else f" at {built.bandwidth:.0%}"
-    if form.resonator is not None:
-        words += (
-            f" with {form.resonator * 1e9:.3g} nH"
-            if form.resonator > 1e-10
-            else f" with {form.resonator * 1e12:.3g} pF"
-        )
-    return words
+    return f"{words} with {form.resonator_text}" if form.resonator_text else words
 
 
 def _worst_words(built: Built) -> str:
@@ -273,7 +267,7 @@ def _why_not(job: Job, required_db: Array, carrier_db: float, windows: Sequence[
     """Say in one sentence why there is no filter."""
     beyond = (required_db > 0) & ~np.isfinite(skirts_db(job, required_db, carrier_db))
     if beyond.any():
-        return leak_reason(job, required_db, beyond)
+        return leak_reason(job, required_db, carrier_db, beyond)
     if nearest is not None:
         if nearest.problem:
             return f"{_described(nearest)}: {nearest.problem}"

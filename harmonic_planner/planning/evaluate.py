@@ -109,15 +109,7 @@ def output_lines(
         found = births(chain, there, to=last)
         for k in wanted:
             if worst_point[k] == point:
-                parts = [
-                    (_birthplace(scenario, b), chain.grid.line(int(j)), float(b.paths[k, j] / leaving[point, k]))
-                    for b in found
-                    for j in np.flatnonzero(b.paths[k] > _LEAST_SHARE * leaving[point, k])
-                ]
-                origins[k] = tuple(
-                    Origin(place, line, share)
-                    for place, line, share in sorted(parts, key=lambda part: (-part[2], part[0], part[1]))
-                )
+                origins[k] = origins_of(scenario, chain, found, k)
     limit_db = chain.to_db(chain.stages[last].limit)
     lines = []
     for k in wanted:
@@ -135,6 +127,29 @@ def output_lines(
             )
         )
     return tuple(lines)
+
+
+def origins_of(scenario: Scenario, chain: ChainArrays, found: Sequence[Birth], line: int) -> tuple[Origin, ...]:
+    """Return where a line, an array index, comes from, the largest share first; tiny shares are left out.
+
+    Parameters
+    ----------
+    scenario : Scenario
+    chain : ChainArrays
+    found : sequence of Birth
+        All that make up the level.
+    line : int
+    """
+    level = sum(float(b.paths[line].sum()) for b in found)
+    parts = [
+        (_birthplace(scenario, b), chain.grid.line(int(j)), float(b.paths[line, j] / level))
+        for b in found
+        for j in np.flatnonzero(b.paths[line] > _LEAST_SHARE * level)
+    ]
+    return tuple(
+        Origin(place, born, share)
+        for place, born, share in sorted(parts, key=lambda part: (-part[2], part[0], part[1]))
+    )
 
 
 def _birthplace(scenario: Scenario, birth: Birth) -> str:

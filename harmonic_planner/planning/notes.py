@@ -117,16 +117,15 @@ def notes_on_limits(scenario: Scenario, levels: Sequence[CarrierLevels]) -> tupl
         if limits is None:
             continue
         carrier_dbm = float(np.max(levels[i].output_dbm))
+        carrier = f"the carrier being {carrier_dbm:.1f} dBm"
         if limits.limit_dbm is not None:
-            found.append(
-                f"{place}.limit_dbm = {limits.limit_dbm:g} dBm is {limits.limit_dbm - carrier_dbm:.1f} dBc, the carrier "
-                f"being {carrier_dbm:.1f} dBm"
-            )
+            absolute_dbc = limits.limit_dbm - carrier_dbm
+            found.append(f"{place}.limit_dbm = {limits.limit_dbm:g} dBm is {absolute_dbc:.1f} dBc, {carrier}")
         if limits.sm329_category_a:
             found.append(
-                f"{place}.limit: Recommendation ITU-R SM.329, category A, 43 + 10 log10 P dB or 70 dBc, whichever is less "
-                f"stringent (memory), is {general_limit_dbc(limits, carrier_dbm):.1f} dBc, the carrier being "
-                f"{carrier_dbm:.1f} dBm; it governs emission at an antenna, and local rules come first"
+                f"{place}.limit: Recommendation ITU-R SM.329, category A, 43 + 10 log10 P dB or 70 dBc, whichever is "
+                f"less stringent (memory), is {general_limit_dbc(limits, carrier_dbm):.1f} dBc, {carrier}; it governs "
+                "emission at an antenna, and local rules come first"
             )
     return tuple(found)
 

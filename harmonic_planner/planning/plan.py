@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 from harmonic_planner.chain.assemble import Array, ChainArrays, assemble, at_levels
 from harmonic_planner.chain.levels import CarrierLevels
@@ -20,6 +20,7 @@ from harmonic_planner.planning.selfcheck import run_checks
 from harmonic_planner.planning.settle import Settled
 from harmonic_planner.planning.stage_filter import StageFilter, from_built
 from harmonic_planner.planning.summary import Findings, summarise
+from harmonic_planner.planning.why import why
 
 
 @dataclass(frozen=True)
@@ -76,6 +77,7 @@ def work_out(scenario: Scenario) -> WorkedOut:
             assumed=(*notes_on_limits(scenario, found.levels), *notes_on_measured(scenario), *beyond_sweep),
         )
     )
+    plan = replace(plan, why=why(scenario, chain, settled, transmissions, margins_db))
     return WorkedOut(plan, tuple(f.built for f in settled.filters))
 
 

@@ -205,18 +205,12 @@ def _change(old: Built, new: Built) -> str:
     if new.topology != old.topology:
         words.append(f"{new.topology} instead of {old.topology}")
     if new.form.resonator is not None and new.form.resonator != old.form.resonator:
-        words.append(f"resonators of {resonator_text(new)}")
+        words.append(f"resonators of {new.form.resonator_text}")
     if new.form.kit.name != old.form.kit.name:
         words.append(f"kit {new.form.kit.name} instead of {old.form.kit.name}")
     if new.form.impedance_ohm != old.form.impedance_ohm:
         words.append(f"{new.form.impedance_ohm:g} ohm inside instead of {old.form.impedance_ohm:g} ohm")
     return ", ".join(words) or "the same filter at another centre"
-
-
-def resonator_text(built: Built) -> str:
-    """Write the free resonator value with its unit."""
-    value = built.form.resonator or 0.0
-    return f"{value * 1e9:.3g} nH" if value > 1e-10 else f"{value * 1e12:.3g} pF"
 
 
 def _cost(job: Job, old: Built, new: Built) -> str:

@@ -18,6 +18,7 @@ from harmonic_planner.model import Scenario
 from harmonic_planner.physics.waveforms import spectrum
 from harmonic_planner.planning.built import Built
 from harmonic_planner.planning.jobs import Job, prototype_attenuation
+from harmonic_planner.planning.one_sided import omega
 from harmonic_planner.planning.settle import Settled
 
 _CIRCUIT_DB = 1e-6
@@ -83,9 +84,17 @@ def check_prototypes(jobs: Sequence[Job], filters: Sequence[Built | None], needi
         if built is None or REGISTRY[built.topology].skew_db is not no_skew:
             continue
         frequency_hz = _decisive(job, required_db)
-        closed = prototype_attenuation(built.prototype, centre_hz=built.centre_hz, bandwidth=built.bandwidth)
-        worst = max(worst, _difference(sweep(built.ideal, frequency_hz).attenuation_db, closed(frequency_hz)))
+        ladder_db = sweep(built.ideal, frequency_hz).attenuation_db
+        worst = max(worst, _difference(ladder_db, _closed_form_db(built, frequency_hz)))
     return Check(worst < _PROTOTYPE_DB, f"lossless ladders against the prototypes: {worst:.1e} dB off at most")
+
+
+def _closed_form_db(built: Built, frequency_hz: Array) -> Array:
+    """Return the attenuation of a filter's lossless prototype, carried to its band or its cut-off [dB]."""
+    if built.one_sided:
+        return built.prototype.attenuation_db(omega(REGISTRY[built.topology], frequency_hz, built.centre_hz))
+    band = prototype_attenuation(built.prototype, centre_hz=built.centre_hz, bandwidth=built.bandwidth)
+    return band(frequency_hz)
 
 
 def check_requirement(chain: ChainArrays, required_db: Sequence[Array], out_of_reach: NDArray[np.bool_]) -> Check:

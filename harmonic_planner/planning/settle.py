@@ -27,11 +27,12 @@ _MOST_LEARNED_DB = 4.0
 
 @dataclass(frozen=True)
 class Settled:
-    """The filters, the rejections they are held to, and the joint choice of orders behind them."""
+    """The filters, the rejections they are held to, and the joint choice of orders behind them, with its candidates."""
 
     filters: tuple[StageFilter, ...]
     needed: Rejections
     allocation: Allocation
+    rows: tuple[Candidates, ...]
 
 
 def settle(chain: ChainArrays, jobs: Sequence[Job], margins_db: Sequence[float]) -> Settled:
@@ -56,7 +57,7 @@ def settle(chain: ChainArrays, jobs: Sequence[Job], margins_db: Sequence[float])
     """
     target = with_margin(chain, margins_db)
     filtered = [job.stage.filter != "none" for job in jobs]
-    options = [_options(job, chain.grid.count) for job in jobs]
+    options = [options_of(job, chain.grid.count) for job in jobs]
     learned = [_Learned(np.full(chain.grid.count, np.inf), 0.0) for _ in jobs]
     drawn_in_db = 0.0
     best: _Round | None = None
@@ -79,7 +80,7 @@ def settle(chain: ChainArrays, jobs: Sequence[Job], margins_db: Sequence[float])
         beyond = _beyond_db(chain, jobs, filters, margins_db)
         if beyond >= 0:
             filters = [accepted(job, f) for job, f in zip(jobs, filters, strict=True)]
-        this = _Round(tuple(filters), tuple(picked), beyond, chosen)
+        this = _Round(tuple(filters), tuple(picked), beyond, chosen, tuple(rows))
         if best is not None and this.rank >= best.rank:
             break
         best = this
@@ -93,7 +94,7 @@ def settle(chain: ChainArrays, jobs: Sequence[Job], margins_db: Sequence[float])
     assert best is not None
     filters, needed = _lowered(chain, target, jobs, best, margins_db)
     held = (held_to(job, f, r) for job, f, r in zip(jobs, filters, needed.required_db, strict=True))
-    return Settled(tuple(held), needed, best.chosen)
+    return Settled(tuple(held), needed, best.chosen, best.rows)
 
 
 @dataclass(frozen=True)
@@ -104,6 +105,7 @@ class _Round:
     picked: tuple[Candidate | None, ...]
     beyond_db: float
     chosen: Allocation
+    rows: tuple[Candidates, ...]
 
     @property
     def failing(self) -> list[int]:
@@ -220,7 +222,7 @@ def _beyond_db(
 
 
 @dataclass(frozen=True)
-class _Options:
+class Options:
     """What one stage can be: fixed, or a choice of candidates; order -> rejections, with strays and without."""
 
     fixed: StageFilter | None
@@ -233,7 +235,7 @@ class _Options:
         return self.offered.filters[order][pick] if order in self.offered.filters else None
 
 
-def _options(job: Job, count: int) -> _Options:
+def options_of(job: Job, count: int) -> Options:
     """Return a stage's options; one row of order 0 where there is no choice."""
     if isinstance(job.stage.filter, GivenFilter):
         fixed = given(job, job.stage.filter)
@@ -244,11 +246,11 @@ def _options(job: Job, count: int) -> _Options:
     else:
         offered = offer(job, able(job))
         if offered.filters:
-            return _Options(None, offered, offered.rejections_db, offered.ideal_db)
+            return Options(None, offered, offered.rejections_db, offered.ideal_db)
         nothing = {0: np.zeros((1, count))}
-        return _Options(unfiltered(job, wanted=True, reason=_no_carrier(job)), offered, nothing, nothing)
+        return Options(unfiltered(job, wanted=True, reason=_no_carrier(job)), offered, nothing, nothing)
     only = {0: fixed.action.rejection_db[None, :]}
-    return _Options(fixed, Offer({}, {}, {}), only, only)
+    return Options(fixed, Offer({}, {}, {}), only, only)
 
 
 def _same_obstacle(one: Allocation, other: Allocation) -> bool:

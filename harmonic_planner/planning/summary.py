@@ -9,7 +9,7 @@ import numpy as np
 
 from harmonic_planner.chain.assemble import Array, ChainArrays
 from harmonic_planner.chain.levels import CarrierLevels
-from harmonic_planner.filters.stress import stress
+from harmonic_planner.filters.stress import cautions, stress
 from harmonic_planner.model import (
     AllocationPlan,
     ElementReport,
@@ -87,14 +87,16 @@ def summarise(f: Findings) -> Plan:
         schema=SCHEMA,
         title=f.scenario.title,
         verdict="met" if met and buildable and checked else "not met",
-        sentence=sentence(f.scenario, f.chain, f.run, f.settled, stages, met=met, buildable=buildable, checked=checked),
+        sentence=sentence(
+            f.scenario, f.chain, f.run, f.jobs, f.settled, stages, met=met, buildable=buildable, checked=checked
+        ),
         limits_met=met,
         buildable=buildable,
         self_check=checked,
         self_checks=tuple(("passed: " if c.passed else "FAILED: ") + c.text for c in f.checks),
         warnings=warnings_for(f.scenario, f.chain, f.jobs, f.levels, f.run.combs),
         assumptions=(*assumptions_for(f.scenario, f.chain, f.jobs), *f.assumed),
-        cautions=cautions_for(f.levels),
+        cautions=(*cautions_for(f.levels), *_stress_cautions(f)),
         source_lines=_lines(f.chain, f.chain.source),
         output=output,
         stages=stages,
@@ -204,6 +206,20 @@ def _requirement(f: Findings, i: int) -> tuple[Requirement, ...]:
         )
         for k in shown
     )
+
+
+def _stress_cautions(f: Findings) -> tuple[str, ...]:
+    """Return what must be said of parts over their rating, and of high voltage, stage by stage."""
+    told = []
+    for job, chosen, level in zip(f.jobs, f.settled.filters, f.levels, strict=True):
+        if chosen.built is None:
+            continue
+        power_dbm = float(level.filter_input_dbm.max())
+        borne = stress(
+            chosen.built.circuit, chosen.built.form.kit, frequency_hz=job.carrier_hz, power_dbm=power_dbm, points=11
+        )
+        told += [f"{job.stage.name}: {text}" for text in cautions(borne, power_dbm=power_dbm)]
+    return tuple(told)
 
 
 def _elements(job: Job, built: Built, power_dbm: float) -> tuple[ElementReport, ...]:

@@ -10,10 +10,11 @@ from harmonic_planner.chain.assemble import ChainArrays
 from harmonic_planner.chain.propagate import births
 from harmonic_planner.model import ElementReport, Scenario, StagePlan
 from harmonic_planner.planning.evaluate import Run
+from harmonic_planner.planning.isolation import leak_shortfall
+from harmonic_planner.planning.jobs import Job
 from harmonic_planner.planning.settle import Settled
 
 _ROUNDING_DB = 1e-9
-_LEAK_DB = 3.0
 
 
 def limits_met(scenario: Scenario, run: Run, settled: Settled) -> bool:
@@ -26,6 +27,7 @@ def sentence(
     scenario: Scenario,
     chain: ChainArrays,
     run: Run,
+    jobs: Sequence[Job],
     settled: Settled,
     stages: Sequence[StagePlan],
     *,
@@ -43,11 +45,11 @@ def sentence(
     if met:
         limits = (
             f"every line is within its limit; the closest, line {line} {where}, has {run.margin_db[to, k]:.1f} dB of "
-            f"margin with {f'{resonators} resonators in {count} filters' if count else 'the filters that are there'}"
+            f"margin with {_filters_words(resonators, count)}"
         )
     else:
         limits = f"line {line} {where} has a margin of {run.margin_db[to, k]:.1f} dB" + _shortfall(
-            scenario, chain, settled, int(to), int(k)
+            scenario, chain, jobs, settled, int(to), int(k)
         )
     if not checked:
         return f"Not met: a self-check failed; {limits}."
@@ -61,8 +63,17 @@ def sentence(
     return f"Not met: {'; '.join(problems)}."
 
 
-def _shortfall(scenario: Scenario, chain: ChainArrays, settled: Settled, to: int, k: int) -> str:
+def _filters_words(resonators: int, count: int) -> str:
+    """Say with how many resonators and filters."""
+    if not count:
+        return "the filters that are there"
+    return f"{resonators} resonator{'s' if resonators != 1 else ''} in {count} filter{'s' if count != 1 else ''}"
+
+
+def _shortfall(scenario: Scenario, chain: ChainArrays, jobs: Sequence[Job], settled: Settled, to: int, k: int) -> str:
     """Say what keeps the limit from being met."""
+    if leak := leak_shortfall(scenario, chain, jobs, settled, to=to, line=k):
+        return f"; {leak}"
     out_of_reach = bool(settled.needed.out_of_reach[to, k])
     if out_of_reach and (overlap := _overlap(scenario, chain, settled, to, k)):
         return f", and no filter can take it out: {overlap}"
@@ -76,23 +87,8 @@ def _shortfall(scenario: Scenario, chain: ChainArrays, settled: Settled, to: int
     if unfit:
         return f"; {unfit[0][0]} has no filter that does what is needed: {unfit[0][1]}"
     if out_of_reach:
-        return f", and no filter can take it out: {_leak(scenario, chain, settled, to, k)}"
+        return ", and no filter can take it out: it is too close to the carrier"
     return ""
-
-
-def _leak(scenario: Scenario, chain: ChainArrays, settled: Settled, to: int, k: int) -> str:
-    """Say whether isolation is what limits a line, at the stage where it was born."""
-    rejections = [chain.from_db(-f.action.rejection_db) for f in settled.filters]
-    worst = max(births(chain, rejections, to=to), key=lambda b: float(b.paths[k].max()))
-    born, i = int(worst.paths[k].argmax()), max(worst.stage, 0)
-    action, name = settled.filters[i].action, scenario.stages[i].name
-    if action.skirt_db[born] - action.rejection_db[born] > _LEAK_DB:
-        return (
-            f"line {chain.grid.line(born)} leaks past the filter of {name}, which alone gives "
-            f"{action.skirt_db[born]:.0f} dB and with the leak {action.rejection_db[born]:.0f} dB: a shield is needed, "
-            "not a resonator"
-        )
-    return "it is too close to the carrier"
 
 
 def _overlap(scenario: Scenario, chain: ChainArrays, settled: Settled, to: int, k: int) -> str:

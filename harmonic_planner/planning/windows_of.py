@@ -56,16 +56,17 @@ def to_report(
 ) -> tuple[Window, ...]:
     """Turn the solver's answers into what the plan shows."""
     beyond = ~np.isfinite(skirts_db(job, required_db, carrier_db))
-    leak = leak_reason(job, required_db, beyond) if beyond.any() else ""
+    leak = leak_reason(job, required_db, carrier_db, beyond) if beyond.any() else ""
     return tuple(_window(r, leak, realisable=realisable(r.prototype)) for r in results)
 
 
-def leak_reason(job: Job, required_db: Array, beyond: NDArray[np.bool_]) -> str:
+def leak_reason(job: Job, required_db: Array, carrier_db: float, beyond: NDArray[np.bool_]) -> str:
     """Say that isolation and not a filter is what limits, with the worst line's numbers."""
     worst = int(np.argmax(np.where(beyond, required_db - job.leak_db, -np.inf)))
     return (
-        f"the line at {job.low_hz[worst] / 1e6:.5g} MHz needs {required_db[worst]:.1f} dB, and the isolation of "
-        f"{job.leak_db[worst]:.0f} dB is counted from the filter's input: a shield is needed, not a resonator"
+        f"the line at {job.low_hz[worst] / 1e6:.5g} MHz needs {required_db[worst]:.1f} dB below a carrier that loses "
+        f"{carrier_db:.1f} dB, so more than {required_db[worst] + carrier_db:.1f} dB of isolation between the filter's "
+        f"input and output, where {job.leak_db[worst]:.0f} dB is counted: a shield is needed, not a resonator"
     )
 
 
@@ -81,6 +82,7 @@ def _window(result: WindowResult, leak: str, *, realisable: bool) -> Window:
         bandwidth_min_hz=result.bandwidth_min * narrow_hz,
         bandwidth_max_hz=result.bandwidth_max * wide_hz,
         centre_hz=wide_hz,
+        centre_min_hz=narrow_hz,
         feasible=result.feasible and not leak,
         reason=reason,
     )

@@ -1,4 +1,4 @@
-"""Two figures for every stage: its comb, and its filter's response.
+"""Two figures for every stage, its comb and its filter's response; one of resonators against bandwidth.
 
 A drawing function takes a series and an Axes, draws, and computes nothing. Colours are those of Okabe and Ito (Color
 Universal Design, 2008), which colour-blind readers can tell apart; each thing also has a marker or a hatch of its own.
@@ -6,7 +6,7 @@ Universal Design, 2008), which colour-blind readers can tell apart; each thing a
 
 import io
 import warnings
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterator, Mapping, Sequence
 from contextlib import contextmanager
 from typing import Any
 
@@ -18,9 +18,10 @@ from matplotlib.patches import Rectangle
 from matplotlib.ticker import LogLocator, NullFormatter
 
 from harmonic_planner.export.names import stage_stem
-from harmonic_planner.model import Plan
+from harmonic_planner.model import Plan, TradePoint
 from harmonic_planner.report import series
 from harmonic_planner.report.series import Comb, Mark, Response
+from harmonic_planner.report.text import decibels
 
 BLACK, ORANGE, BLUE, GREEN, VERMILLION = "#000000", "#E69F00", "#0072B2", "#009E73", "#D55E00"
 
@@ -117,6 +118,41 @@ def draw_response(response: Response, axes: Axes) -> None:
                 label=label,
             )
     _legend(axes)
+
+
+def draw_trade(points: Sequence[TradePoint], axes: Axes) -> None:
+    """Draw the widest common bandwidth against the count of resonators.
+
+    Parameters
+    ----------
+    points : sequence of TradePoint
+        At least one.
+    axes : Axes
+        An empty pair of axes.
+    """
+    totals = [point.total for point in points]
+    percent = [100 * point.bandwidth for point in points]
+    axes.set_title("Resonators against bandwidth")
+    axes.set_xlabel("Resonators in all stages")
+    axes.set_ylabel("Every bandpass at least so wide (% of its centre)")
+    axes.set_xlim(totals[0] - 0.5, totals[-1] + 0.5)
+    axes.set_ylim(0.0, 1.25 * max(percent))
+    axes.set_xticks(totals)
+    axes.plot(totals, percent, color=BLUE, marker="o", linewidth=1.4, label="widest common bandwidth")
+    for point, height in zip(points, percent, strict=True):
+        by_stage = " + ".join(str(n) for n in point.resonators)
+        _name(axes, f"{by_stage}\nmargin {decibels(point.margin_db)} dB", point.total, height)
+    _legend(axes)
+
+
+def trade_figure(plan: Plan) -> dict[str, bytes]:
+    """Draw ``trade.png``, if the plan has a trade; the same plan gives the same bytes."""
+    if not plan.trade:
+        return {}
+    with _plain_style():
+        figure, axes = _new_figure()
+        draw_trade(plan.trade, axes)
+        return {"trade.png": _png(figure)}
 
 
 def stage_figures(plan: Plan) -> dict[str, bytes]:

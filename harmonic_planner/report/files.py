@@ -11,7 +11,7 @@ from harmonic_planner.model import Plan, StagePlan
 from harmonic_planner.planning.built import Built, passband_hz
 from harmonic_planner.planning.comparison import Comparison
 from harmonic_planner.planning.plan import WorkedOut
-from harmonic_planner.report.figures import stage_figures
+from harmonic_planner.report.figures import stage_figures, trade_figure
 
 
 def plan_files(worked: WorkedOut, comparison: Comparison | None = None) -> dict[str, bytes | str]:
@@ -28,8 +28,8 @@ def plan_files(worked: WorkedOut, comparison: Comparison | None = None) -> dict[
     -------
     dict of str to bytes or str
         File name and content: ``plan.json``, three tables, two figures a stage, and for every filter that is a circuit
-        a netlist, a bench deck and a Touchstone file; ``comparison.json`` where there is one. The same plan gives the
-        same bytes.
+        a netlist, a bench deck and a Touchstone file; ``trade.png`` where the plan has a trade, ``comparison.json``
+        where there is a comparison. The same plan gives the same bytes.
     """
     plan = with_file_names(worked)
     files: dict[str, bytes | str] = {
@@ -37,6 +37,7 @@ def plan_files(worked: WorkedOut, comparison: Comparison | None = None) -> dict[
         "requirements.csv": requirements_csv(plan),
         "elements.csv": elements_csv(plan),
         **stage_figures(plan),
+        **trade_figure(plan),
     }
     for number, (stage, built) in enumerate(zip(plan.stages, worked.circuits, strict=True), start=1):
         if built is not None:

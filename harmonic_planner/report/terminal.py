@@ -20,6 +20,7 @@ from harmonic_planner.model import (
     Plan,
     StagePlan,
 )
+from harmonic_planner.report.around import show_around, show_why
 from harmonic_planner.report.console import STYLES, bullet, bullets, heading, section, table, verdict_line
 from harmonic_planner.report.parts import show_doubts
 from harmonic_planner.report.text import (
@@ -60,9 +61,11 @@ def show_plan(plan: Plan, screen: Console) -> None:
     section(screen, "Stages", _stage_table(plan))
     if plan.allocation is not None:
         screen.print(allocation_words(plan.allocation))
+    show_why(plan, screen)
     section(screen, "Output lines with the least margin", _worst_lines_table(plan))
     show_doubts(plan, screen)
     _proposals(plan, screen)
+    show_around(plan, screen)
     bullets(screen, "Self-check" if plan.self_check else "Self-check FAILED", plan.self_checks)
     bullets(screen, "Warnings", merged(plan.warnings, [stage.name for stage in plan.stages]))
     bullets(screen, "Cautions", plan.cautions)

@@ -26,8 +26,10 @@ from builders import chain_of
 
 FACTORS = ((2, 2), (2, 3), (3, 2), (3, 3), (2, 2, 2), (2, 3, 2), (3, 2, 2), (2, 2, 3), (2, 2, 2, 2), (3, 2, 2, 2))
 APART = 7
-OWED = 0.7
+OWED = 0.9
 """Share of a line that has to come along the paths compared."""
+FAINTEST = 1e-9
+"""Amplitudes below are rounding: a power law, say, makes no image."""
 
 
 @dataclass(frozen=True)
@@ -74,7 +76,7 @@ class Run:
             made = np.where(arrays.own, 0.0, arrays.conversion @ kept)
             offset = np.abs(np.arange(made.size) - arrays.carrier) / carrier_in
             own_side = np.max(made[offset <= 0.5], initial=0.0)
-            near = (offset <= (s.times if reach is None else reach)) & (made >= own_side / 10) & (made > 0)
+            near = (offset <= (s.times if reach is None else reach)) & (made >= own_side / 10) & (made > FAINTEST)
             if len(self.scenario.source.lines_dbc) == 1:
                 near &= self.order == 1
             kept = passed * np.where(near, made, 0.0)

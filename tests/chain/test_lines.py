@@ -1,4 +1,4 @@
-"""The grid of lines and the limits on it."""
+"""The grid of lines, and what leaks past a filter."""
 
 import math
 from fractions import Fraction
@@ -9,8 +9,8 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from harmonic_planner.chain.leakage import isolation_db, skirt_needed_db, with_leakage
-from harmonic_planner.chain.lines import LineGrid, grid_for, output_limits_dbc
-from harmonic_planner.model import Isolation, MaskBand, Output
+from harmonic_planner.chain.lines import LineGrid, grid_for
+from harmonic_planner.model import Isolation
 
 from builders import chain_of
 
@@ -25,23 +25,6 @@ def test_the_grid_reaches_four_times_the_factor_and_holds_fractions() -> None:
 def test_a_line_off_the_grid_is_an_error() -> None:
     with pytest.raises(ValueError, match="line 1/3 is not on the grid"):
         LineGrid(2, 8).index(Fraction(1, 3))
-
-
-def _limits(output: Output, low: float, high: float) -> float:
-    return float(output_limits_dbc(output, np.array([low]), np.array([high]))[0])
-
-
-def test_a_mask_replaces_the_limit_inside_its_band_only() -> None:
-    output = Output(limit_dbc=-60.0, mask=(MaskBand(100.0, 200.0, -40.0), MaskBand(200.0, 300.0, -80.0)))
-    assert _limits(output, 150, 160) == -40  # looser inside a band
-    assert _limits(output, 250, 260) == -80
-    assert _limits(output, 190, 210) == -80  # the strictest of both bands, which cover the span
-    assert _limits(output, 90, 110) == -60  # partly outside: the general limit counts too
-    assert _limits(output, 400, 400) == -60
-
-
-def test_a_mask_alone_asks_nothing_outside_its_bands() -> None:
-    assert _limits(Output(mask=(MaskBand(100.0, 200.0, -40.0),)), 300, 300) == math.inf
 
 
 def test_default_isolation_falls_by_20_db_a_decade_above_1_ghz() -> None:

@@ -57,6 +57,17 @@ def test_the_files_belong_together():
     assert np.abs(found.s[:, 0, 0] - wanted.s11).max() < 1e-12
 
 
+def test_the_network_file_covers_every_line_that_is_there_finely():
+    files = filter_files("01_x", "x", CIRCUIT, KIT, **SPANS, present_hz=(20e6, 960e6))  # type: ignore[arg-type]
+    file = io.StringIO(files["filters/01_x.s2p"])
+    file.name = "x.s2p"
+    frequency = skrf.Network(file).f
+    # the largest drift a scenario may have, 20 %, reads a response at up to 1/0.8 of a line's frequency
+    assert frequency[[0, -1]] == pytest.approx([20e6 / 1.25, 960e6 / 0.8])
+    assert np.max(frequency[1:] / frequency[:-1]) <= 1.0041
+    assert "59250000" in files["filters/01_x_bench.cir"] or "5.925" in files["filters/01_x_bench.cir"]
+
+
 def test_a_network_file_has_one_resistance():
     with pytest.raises(CircuitError, match="50 ohm and 80 ohm"):
         filter_files("01_x", "x", replace(CIRCUIT, load_ohm=80.0), KIT, **SPANS)  # type: ignore[arg-type]
