@@ -53,8 +53,9 @@ drift = "1 %"
 margin = "3 dB"
 # "worst-case" adds the amplitudes of paths into one line, "average" their powers.
 phases = "worst-case"
-# Leakage past a filter: 60 dB unshielded, 75 dB with a can, 90 dB in separate compartments, or "none".
-isolation = "75 dB"
+# Leakage past a filter, and of earlier carriers into a stage: 60 dB unshielded, 75 dB with a can, 90 dB in separate
+# compartments, or "none".
+isolation = "90 dB"
 # Circuit: "auto", a name, or a list of names.
 topology = "auto"
 # Coupled resonators: their inductance where it is fixed, or their capacitance, as in "6 pF".

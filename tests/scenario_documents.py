@@ -83,7 +83,10 @@ kit = "chip-0805"
 order = "auto"
 bandwidth = "auto"
 resonator = "6 pF"
-tap = { limit = "SM.329 category A", limit_dbm = "-40 dBm", mask = [{ from = "1 GHz", to = "2 GHz", limit = "-20 dBc" }] }
+[stage.tap]
+limit = "SM.329 category A"
+limit_dbm = "-40 dBm"
+mask = [{ from = "1 GHz", to = "2 GHz", limit = "-20 dBc" }]
 [stage.device]
 type = "push-push"
 half_angle = "75 deg"

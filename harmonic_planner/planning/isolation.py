@@ -19,6 +19,8 @@ from harmonic_planner.planning.settle import Settled
 
 _DECISIVE = 0.5
 """Share of a limit from which leakage is what fails it: a filter could not mend it by itself."""
+_LEFT = 0.5
+"""Share of a limit that is left to leakage where filters, planned anew, have yet to bring the rest down."""
 _NAMED = 0.1
 """Share of all leakage from which one is named."""
 _SLACK_DB = 0.05
@@ -77,7 +79,7 @@ def leak_shortfall(
     if not found or level <= allowed or leaking < _DECISIVE * allowed:
         return ""
     others = level - leaking
-    room = allowed - others if others < allowed else allowed
+    room = allowed - others if others < allowed else allowed * _LEFT
     if leaking <= room:
         return ""
     more_db = float(chain.to_db(leaking / room)) + _SLACK_DB

@@ -66,7 +66,8 @@ def _show_what_if(plan: Plan, screen: Console) -> None:
     count = f"{now.total_now} resonators" if now.met_now else f"{now.total_now} resonators, not met"
     screen.print(f"Now: {count}, margin {decibels(now.margin_now_db, signed=True)} dB, by the same search.")
     if plan.allocation is not None and plan.allocation.total != now.total_now:
-        screen.print(f"The filters as built take {plan.allocation.total}: strays and grid values cost the rest.")
+        more = ": strays and grid values cost the rest" if plan.allocation.total > now.total_now else ""
+        screen.print(f"The filters as built take {plan.allocation.total}{more}.")
     still = len(plan.what_if) - len(shown)
     if still:
         screen.print(f"{still} more change{'s' if still > 1 else ''} would do next to nothing; plan.json has them.")

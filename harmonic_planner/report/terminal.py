@@ -62,7 +62,11 @@ def show_plan(plan: Plan, screen: Console) -> None:
     if plan.allocation is not None:
         screen.print(allocation_words(plan.allocation))
     show_why(plan, screen)
-    section(screen, "Output lines with the least margin", _worst_lines_table(plan))
+    for stage in plan.stages[:-1]:
+        if stage.limited_lines:
+            head = f"Lines behind {printable(stage.name)} with the least margin"
+            section(screen, head, _worst_lines_table(stage.limited_lines))
+    section(screen, "Output lines with the least margin", _worst_lines_table(plan.output.lines))
     show_doubts(plan, screen)
     _proposals(plan, screen)
     show_around(plan, screen)
@@ -225,14 +229,14 @@ def _parts(made: FilterPlan) -> str:
     return worst
 
 
-def _worst_lines_table(plan: Plan) -> Table:
-    """List the output lines that come closest to their limit, and where each comes from."""
+def _worst_lines_table(lines: Sequence[OutputLine]) -> Table:
+    """List the lines at an output that come closest to their limit, and where each comes from."""
     made = table(
         *("line", "frequency", "dBc", "limit", "margin\ndB", "cause"),
         right=("dBc", "limit", "margin\ndB"),
         fixed=("line", "frequency"),
     )
-    limited = [line for line in plan.output.lines if line.margin_db is not None]
+    limited = [line for line in lines if line.margin_db is not None]
     for line in sorted(limited, key=_margin)[:_WORST_LINES]:
         main = origins_text(line.origins, at_least=_LEAST_SHARE) or origins_text(line.origins)
         made.add_row(

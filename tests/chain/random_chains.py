@@ -9,6 +9,8 @@ half line, the devices' own lines pass the filters, and everything falls on ever
 from __future__ import annotations
 
 import math
+from collections.abc import Sequence
+from copy import deepcopy
 from dataclasses import dataclass, replace
 from fractions import Fraction
 from typing import Literal
@@ -61,7 +63,7 @@ class Run:
         return np.array([by_remainder[j % APART] for j in range(1, self.chain.grid.count + 1)])
 
     def compared(self, reach: float | None = None) -> np.ndarray:
-        """First-order lines at the output that owe nearly all to lines within 20 dB of the own side at every multiplier.
+        """First-order lines that owe nearly all to lines within 20 dB of the own side at every multiplier.
 
         Parameters
         ----------
@@ -90,8 +92,10 @@ class Run:
         return np.where(expected > 0, _db(highest) - _db(np.where(expected > 0, expected, 1.0)), np.inf)
 
 
-def random_run(kind: Literal["apart", "plain"], seed: int, level_db: float, *, draws: int) -> Run:
-    """Return a chain whose residuals sum to `level_db` at one multiplier's input and to 5–30 dB less at the others'."""
+def random_runs(
+    kind: Literal["apart", "plain"], seed: int, levels_db: Sequence[float], *, draws: int
+) -> tuple[Run, ...]:
+    """Return one chain at several levels: the residuals' sum at one multiplier's input, 5–30 dB less at the others."""
     rng = np.random.default_rng(seed)
     factors = FACTORS[seed % len(FACTORS)]
     lines: dict[Fraction, float]
@@ -108,9 +112,14 @@ def random_run(kind: Literal["apart", "plain"], seed: int, level_db: float, *, d
     )
     chain = assemble(scenario, phases="worst-case")
     filters = [_filter(chain, i, rng, hold_own=kind == "apart") for i in range(len(factors))]
-    chain, filters = _at_level(chain, filters, level_db, rng)
-    signed, exact = _draws(scenario, chain, filters, rng, draws)
-    return Run(scenario, chain, filters, propagate(chain, filters), signed, exact)
+    conversions = _signed_conversions(scenario, chain)
+    runs = []
+    for level_db in levels_db:
+        own = deepcopy(rng)  # a level does not depend on which others are asked for
+        scaled, at_level = _at_level(chain, filters, level_db, own)
+        signed, exact = _draws(scenario, scaled, at_level, conversions, own, draws)
+        runs.append(Run(scenario, scaled, at_level, propagate(scaled, at_level), signed, exact))
+    return tuple(runs)
 
 
 def _device(times: int, rng: np.random.Generator) -> Device:
@@ -160,7 +169,12 @@ def _at_level(
 
 
 def _draws(
-    scenario: Scenario, chain: ChainArrays, filters: list[Array], rng: np.random.Generator, draws: int
+    scenario: Scenario,
+    chain: ChainArrays,
+    filters: list[Array],
+    conversions: list[tuple[Array, Array, Array]],
+    rng: np.random.Generator,
+    draws: int,
 ) -> tuple[Array, Array]:
     """Return lines at the output, linear and exact, with the same phases of source and filters."""
     shape = (draws, chain.grid.count)
@@ -170,13 +184,9 @@ def _draws(
         turned.append(t * np.exp(2j * np.pi * rng.random(shape)))
         turned[-1][:, s.carrier] = 1.0
     signed: Complex = entering
-    carrier_in = chain.grid.q
-    for s, arrays, passed in zip(scenario.stages, chain.stages, turned, strict=True):
-        assert s.device is not None
-        direct, mirrored, own = _signed_conversion(s.device, s.times, carrier_in, chain.grid.count)
+    for (direct, mirrored, own), arrays, passed in zip(conversions, chain.stages, turned, strict=True):
         signed = passed * (signed @ direct.T + np.conj(signed) @ mirrored.T + own)
         signed[:, arrays.carrier] = 0.0
-        carrier_in = arrays.carrier + 1
     entering = entering.copy()
     entering[:, chain.grid.q - 1] = 1.0
     idle = np.full(len(filters), -np.inf)
@@ -185,21 +195,27 @@ def _draws(
     return np.abs(signed), np.abs(exact)
 
 
-def _signed_conversion(device: Device, times: int, carrier_in: int, count: int) -> tuple[Array, Array, Array]:
-    """Return what lines and mirrored (conjugate) lines convert to, and the own lines, over the wanted line.
+def _signed_conversions(scenario: Scenario, chain: ChainArrays) -> list[tuple[Array, Array, Array]]:
+    """Return, per stage, what lines and mirrored (conjugate) lines convert to, and the own lines, over the wanted line.
 
     f′(cos φ) = Σ G_|m| e^(jmφ) multiplies the residual: at `in` + m·k0 as it is, at −(`in` + m·k0) conjugate.
     """
-    s = spectrum(device, times, 2 * count // carrier_in + times + 1)
-    ratio = s.G / (2 * s.F[times])
+    found = []
+    count, carrier_in = chain.grid.count, chain.grid.q
     j = np.arange(1, count + 1)
-    matrices = []
-    for distance in (j[:, None] - j, j[:, None] + j):
-        reached = distance % carrier_in == 0
-        matrices.append(np.where(reached, ratio[np.abs(distance) // carrier_in], 0.0))
-    own = np.zeros(count)
-    own[carrier_in - 1 :: carrier_in] = (s.F / s.F[times])[1 : count // carrier_in + 1]
-    return matrices[0], matrices[1], own
+    for stage, arrays in zip(scenario.stages, chain.stages, strict=True):
+        assert stage.device is not None
+        s = spectrum(stage.device, stage.times, 2 * count // carrier_in + stage.times + 1)
+        ratio = s.G / (2 * s.F[stage.times])
+        matrices = []
+        for distance in (j[:, None] - j, j[:, None] + j):
+            reached = distance % carrier_in == 0
+            matrices.append(np.where(reached, ratio[np.abs(distance) // carrier_in], 0.0))
+        own = np.zeros(count)
+        own[carrier_in - 1 :: carrier_in] = (s.F / s.F[stage.times])[1 : count // carrier_in + 1]
+        found.append((matrices[0], matrices[1], own))
+        carrier_in = arrays.carrier + 1
+    return found
 
 
 def _db(amplitude: Array) -> Array:

@@ -337,3 +337,18 @@ def test_a_stage_built_from_the_model_runs_as_it_is() -> None:
     expected = chain.to_db(propagate(chain, filters)[-1].leaving)
     seen = expected > -120
     assert got.max_dbc[seen] == pytest.approx(expected[seen], abs=1e-3)
+
+
+def test_earlier_carriers_that_leak_are_added() -> None:
+    """A carrier past the last filter comes out at the level of its leak, which no filter touches."""
+    scenario = chain_with((2, 3), 4)
+    chain = assemble(scenario, phases="worst-case")
+    leak = np.zeros(chain.grid.count)
+    line = chain.grid.index(Fraction(2))
+    leak[line] = 10 ** (-40 / 20)
+    last = replace(chain.stages[-1], leak=leak)
+    chain = replace(chain, stages=(*chain.stages[:-1], last))
+    closed = [np.where(np.arange(chain.grid.count) == s.carrier, 1.0, 0.0) for s in chain.stages]
+    got = exact(scenario, chain, closed, draws=3, rng=np.random.default_rng(1))
+    assert got.max_dbc[line] == pytest.approx(-40.0)
+    assert got.linear_dbc[line] == pytest.approx(-40.0)

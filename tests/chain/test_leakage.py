@@ -176,7 +176,7 @@ def test_leakage_takes_its_share_of_what_filters_may_leave() -> None:
 
 
 def test_the_exact_run_has_the_leak_too() -> None:
-    """With everything else taken out the exact run shows the leak's own and image side, 0.1 dB from the linear figure."""
+    """With all else taken out the exact run shows the leak's own and image side, 0.1 dB from the linear figure."""
     scenario = chain_of(2, 3, design=ISOLATED)
     chain = assemble(scenario, phases="worst-case")
     silent = [np.where(np.arange(chain.grid.count) == s.carrier, 1.0, 0.0) for s in chain.stages]

@@ -22,7 +22,8 @@ KEYS = {
     "output.lines.0": "line frequency_hz level_dbc allowance_db limit_dbc margin_db margin_other_phases_db origins",
     "output.lines.0.origins.0": "stage line share",
     "output.phase_noise.0": "offset_hz dbc_hz",
-    "stages.0": "name times line frequency_hz drive_dbm output_dbm input_lines device_lines filter",
+    "stages.0": "name times line frequency_hz drive_dbm output_dbm input_lines device_lines filter limit_dbc"
+    " limited_lines",
     "stages.0.input_lines.0": "line level_dbc",
     "stages.0.filter": "source family ripple_db order topology centre_hz bandwidth_hz loss_db return_loss_db"
     " requirement windows elements proposals",

@@ -1,7 +1,7 @@
 """Category A of Recommendation ITU-R SM.329.
 
-Published: 43 + 10 log10 P dB, or 70 dBc, whichever is less stringent (Recommendation ITU-R SM.329, "Unwanted emissions in
-the spurious domain", table 2, category A, all services but those quoted there (memory)); levels worked from it by hand.
+Published: 43 + 10 log10 P dB, or 70 dBc, whichever is less stringent (Recommendation ITU-R SM.329, "Unwanted emissions
+in the spurious domain", table 2, category A, all services but those quoted there (memory)); levels worked by hand.
 """
 
 import math

@@ -46,7 +46,7 @@ def found() -> Worked:
 
 
 def beyond_db(target: ChainArrays, transmissions: Sequence[Array]) -> Array:
-    """Return level over limit of every line at the output [dB], (points, lines): v = D·(F + M·v) + A, stage by stage."""
+    """Return level over limit of every line at the output [dB], (points, lines): v = D·(F + M·v) + A by stages."""
     v = np.broadcast_to(target.source, np.broadcast_shapes(*(t.shape for t in transmissions)))
     for stage, passed in zip(target.stages, transmissions, strict=True):
         made = stage.termination * (stage.device + np.einsum("oi,...i->...o", stage.conversion, v))
