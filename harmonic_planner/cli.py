@@ -319,9 +319,7 @@ def apply(
     return 0
 
 
-def _planned(
-    path: Path, before_planning: Callable[[], None] = lambda: None, *, what_if: bool = False
-) -> "WorkedOut":
+def _planned(path: Path, before_planning: Callable[[], None] = lambda: None, *, what_if: bool = False) -> "WorkedOut":
     """Load a scenario and plan it; `before_planning` may raise once the scenario is known to be good."""
     from harmonic_planner.scenario import load
 

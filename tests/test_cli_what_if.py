@@ -9,9 +9,12 @@ from cli_helpers import GOOD
 from harmonic_planner import cli
 
 PAD_AFTER = 'pad_after = "6 dB"\n'
-CHAIN = GOOD.replace(PAD_AFTER, PAD_AFTER + 'amplifier = { gain = "20 dB" }\n').replace(
-    'kit = "chip-1008"\n', 'kit = "chip-1008"\ntopology = "ladder"\n'
+CHAIN = (
+    GOOD[: GOOD.rindex("[[stage]]")]  # its tripler alone
+    .replace(PAD_AFTER, PAD_AFTER + 'amplifier = { gain = "20 dB" }\n')
+    .replace('kit = "chip-1008"\n', 'kit = "chip-1008"\ntopology = "ladder"\n')
 )
+
 
 @pytest.fixture(scope="module")
 def outcome(tmp_path_factory) -> tuple[Path, int]:

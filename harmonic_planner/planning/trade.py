@@ -97,10 +97,11 @@ def bandwidth_trade(scenario: Scenario, plan: Plan, offers: Offers | None = None
 
 
 def _widest(widened: _Widened, total: int, low: int) -> int:
-    """Return the widest step at which `total` is enough, by bisection above `low`, which is known to be."""
-    high = widened.most
-    if widened.allocation(high, total) is not None:
-        return high
+    """Return the widest step at which `total` is enough: strides that double from `low`, which is, then bisection."""
+    stride, high = 1, widened.most + 1
+    while low + stride < high and widened.allocation(low + stride, total) is not None:
+        low, stride = low + stride, 2 * stride
+    high = min(low + stride, high)
     while high - low > 1:
         middle = (low + high) // 2
         if widened.allocation(middle, total) is not None:

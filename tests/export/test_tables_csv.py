@@ -129,6 +129,11 @@ def test_small_shares_may_be_left_out():
     assert origins_text(origins, at_least=0.1) == "line 3 left by a (96 %)"
 
 
+def test_a_leak_is_named_by_what_leaks_and_where():
+    origins = (Origin("leak of source into the output", Fraction(1), 0.7), Origin("a", Fraction(3), 0.3))
+    assert origins_text(origins) == "line 1, leak of source into the output (70 %); line 3 left by a (30 %)"
+
+
 def test_shares_of_one_stage_by_one_line_are_added():
     origins = (Origin("a", Fraction(3), 0.3), Origin("source", Fraction(2), 0.4), Origin("a", Fraction(3), 0.3))
     assert origins_text(origins) == "line 3 left by a (60 %); line 2 of the source (40 %)"

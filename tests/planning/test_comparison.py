@@ -97,17 +97,20 @@ def test_the_last_filter_detuned_by_four_percent_is_told_from_exact_lines(by: fl
 def test_no_filter_is_wrongly_convicted_of_what_another_did(long_mode: bool) -> None:
     """Over exact runs with one filter off by 4 %, phases at random: one that stands out is the right one.
 
-    An earlier filter hides behind phases more often than the last: it is first in most runs, not in all.
+    An earlier filter often hides behind phases, and then nothing needs explaining. Where something does, what is
+    likeliest is nearly always right.
     """
     firsts = []
     for index in (0, 1):
         for by in (-0.04, 0.04):
-            for seed in range(100, 120 if long_mode else 103):
+            for seed in range(100, 120 if long_mode else 102):
                 found = compare(chain(), on_the_bench(detuned(index, by), seed=seed))
                 right = first(found) == (f"stage {index + 1}", "filter")
                 assert right or not found.told, (index, by, seed, found.findings)
-                firsts.append(right)
-    assert sum(firsts) >= 0.75 * len(firsts)
+                if not found.findings[0].startswith("nothing needs explaining"):
+                    firsts.append(right)
+    assert len(firsts) >= 4
+    assert sum(firsts) >= 0.9 * len(firsts)
 
 
 @pytest.mark.parametrize("seed", range(2, 5))

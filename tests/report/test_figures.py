@@ -5,6 +5,7 @@ import struct
 import sys
 import zlib
 from dataclasses import replace
+from fractions import Fraction
 
 import pytest
 from matplotlib.figure import Figure
@@ -62,6 +63,14 @@ def test_comb_shows_what_the_budget_allows():
 def test_comb_of_the_last_stage_shows_the_output_limit_and_no_other_does():
     assert drawn(comb_axes(2), "limit") == [(60.0, -50.0), (100.0, -50.0), (140.0, -50.0)]
     assert "limit" not in legend(comb_axes(0))
+
+
+def test_comb_of_a_tapped_stage_shows_the_limits_of_the_tap():
+    plan = example_plan()
+    tapped = replace(plan.stages[0], limited_lines=(replace(plan.output.lines[1], line=Fraction(4), limit_dbc=-62.0),))
+    axes = Figure().add_subplot()
+    draw_comb(series.comb(replace(plan, stages=(tapped, *plan.stages[1:])), 0), axes)
+    assert drawn(axes, "limit") == [(80.0, -62.0)]
 
 
 def test_comb_has_units_on_both_axes_and_names_its_lines():

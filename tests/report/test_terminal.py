@@ -80,6 +80,16 @@ def test_at_most_five_output_lines_are_shown():
     assert sum(row.startswith("3 ") for row in rows) == 5
 
 
+def test_lines_of_a_tap_have_a_table_of_their_own():
+    plan = example_plan()
+    first = replace(plan.stages[0], limited_lines=plan.output.lines[:2])
+    rows = section(
+        shown(plan=replace(plan, stages=(first, *plan.stages[1:]))), "Lines behind first tripler with the least margin"
+    )
+    assert [row.split()[0] for row in rows if row[:1].isdigit()] == ["5", "3"]
+    assert "Lines behind" not in shown()
+
+
 def parts_shown(plan=None) -> list[list[str]]:
     """Words of the rows under parts to look at, headings of stages and continued lines among them."""
     return [row.split() for row in section(shown(plan=plan), "Parts to look at")[2:]]
