@@ -414,8 +414,8 @@ EXPECTED = {
         "no such file"
     ],
     "no table": [
-        'stage[1].filter.table = "no such file.csv": must be the path of a CSV file with frequency and rejection; there '
-        "is no such file"
+        'stage[1].filter.table = "no such file.csv": must be the path of a CSV file with frequency and rejection; '
+        "there is no such file"
     ],
     "file as a number": [
         "stage[1].filter.touchstone = 3: must be the path of a file: one line of text of 1 to 300 characters"

@@ -90,7 +90,8 @@ def test_the_results_are_written_where_asked(place, capsys):
     assert "comparison.json" not in os.listdir(place / "out")
 
 
-def test_measured_lines_stand_beside_computed_ones(place, capsys):
+@pytest.mark.usefixtures("place")
+def test_measured_lines_stand_beside_computed_ones(capsys):
     assert cli.main(["budget", "chain.toml", "--measured", "lines.csv"]) == 0
     out = capsys.readouterr().out
     for words in ("Measured at the output, dBc", "What the measured lines say", "One change each", "random phases"):

@@ -12,6 +12,7 @@ import pytest
 from scenario_documents import given_filter
 from test_scenario_schema import schema_faults
 
+from harmonic_planner.applying import moved
 from harmonic_planner.model import MeasuredFilter
 from harmonic_planner.scenario import ScenarioError, json_schema, loads
 
@@ -103,7 +104,8 @@ BAD_TOUCHSTONE = {
     "four ports": ("x.s4p", "", "it has 4 ports; a filter has two"),
     "one port of version 2": (
         "x.ts",
-        "[Version] 2.0\n# Hz S RI R 50\n[Number of Ports] 1\n[Number of Frequencies] 1\n[Network Data]\n1e6 0 0\n[End]\n",
+        "[Version] 2.0\n# Hz S RI R 50\n[Number of Ports] 1\n[Number of Frequencies] 1\n"
+        "[Network Data]\n1e6 0 0\n[End]\n",
         "it has 1 port; a filter has two",
     ),
     "another name": ("x.txt", "1", "its name must end in .s2p, or in .ts for version 2"),
@@ -237,6 +239,13 @@ def test_the_schema_knows_measured_filters(keys):
     assert schema_faults(tomllib.loads(given_filter(keys)), json_schema(), json_schema()) == []
     wrong = tomllib.loads(given_filter(f"{keys}, order = 3"))
     assert schema_faults(wrong, json_schema(), json_schema()) != []
+
+
+def test_a_scenario_that_moves_keeps_its_files(tmp_path):
+    text = given_filter('touchstone = "parts/x.s2p"')
+    there = moved(text, from_folder=tmp_path, to_folder=tmp_path / "new")
+    assert there == text.replace('"parts/x.s2p"', '"../parts/x.s2p"')
+    assert moved(text, from_folder=tmp_path, to_folder=tmp_path) == text
 
 
 def test_the_default_is_listed(tmp_path):

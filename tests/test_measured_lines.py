@@ -4,10 +4,11 @@ from fractions import Fraction
 from pathlib import Path
 
 import pytest
-from builders import chain_of
 
 from harmonic_planner.measured_lines import read_lines
 from harmonic_planner.model import PlannerError
+
+from builders import chain_of
 
 CHAIN = chain_of(3, 2)  # 20 MHz to 120 MHz, line 6
 TUNED = chain_of(3, 2, source_hz=(19e6, 21e6))

@@ -9,7 +9,7 @@ import pytest
 from harmonic_planner import cli
 
 ROOT = Path(__file__).parents[1]
-COMMANDS = ("plan", "lines", "window", "schema", "new", "apply")
+COMMANDS = ("plan", "lines", "window", "budget", "schema", "new", "apply")
 
 
 def load_extractor():

@@ -271,7 +271,10 @@ def _none_helps(job: Job, tried: list[Built], required_db: Array) -> str:
             if missing[line] > 0
             else f"{best.midband_db:.1f} dB of loss"
         )
+    described = f"{best.topology} order {best.prototype.order} of {best.form.kit.name} at {best.bandwidth:.1%}"
+    if sound and best.strain[0] == 0:
+        return f"nothing milder was found; what is marginal can be built: {described}, {worst.ref}: {worst.reason}"
     return (
         f"nothing that keeps every limit can be built of lumped parts at {job.centre_hz / 1e6:.5g} MHz: the best "
-        f"tried, {best.topology} order {best.prototype.order} of {best.form.kit.name} at {best.bandwidth:.1%}, has {limit}"
+        f"tried, {described}, has {limit}"
     )

@@ -1,4 +1,4 @@
-"""Measured against computed: what was changed is named first where lines can tell, and where they cannot that is said."""
+"""Measured against computed: what was changed is named first where lines can tell; where they cannot, that is said."""
 
 from __future__ import annotations
 

@@ -12,11 +12,11 @@ from hypothesis import strategies as st
 
 from harmonic_planner.chain.assemble import assemble
 from harmonic_planner.model import GivenFilter, MeasuredFilter, PlannerError, Scenario
+from harmonic_planner.physics.prototypes import Prototype
 from harmonic_planner.planning.hardware import budget
 from harmonic_planner.planning.jobs import act, make_jobs, prototype_attenuation
 from harmonic_planner.planning.measured import interpolated, measured
 from harmonic_planner.planning.plan import make_plan
-from harmonic_planner.physics.prototypes import Prototype
 
 from builders import DESIGN, chain_of
 
