@@ -4,12 +4,24 @@ import os
 import shutil
 
 import pytest
+from hypothesis import HealthCheck, settings
 
 LONG = "HARMONIC_PLANNER_LONG"
 REQUIRE_EXTERNAL = "HARMONIC_PLANNER_REQUIRE_EXTERNAL"
 
 # The matrices here are small: threads inside the linear algebra would only fight with pytest's own workers.
 os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
+
+
+# The same examples in every run, and none judged by the time it takes; the long mode draws new ones.
+settings.register_profile(
+    "sampled",
+    derandomize=True,
+    deadline=None,
+    suppress_health_check=[HealthCheck.too_slow, HealthCheck.filter_too_much],
+)
+settings.register_profile("long", deadline=None, suppress_health_check=[HealthCheck.too_slow])
+settings.load_profile("long" if os.environ.get(LONG) else "sampled")
 
 
 def is_long() -> bool:

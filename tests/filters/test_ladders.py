@@ -157,10 +157,11 @@ def test_worked_skirt_of_a_600_mhz_ladder(name: str):
 
 
 def test_registry_and_aliases():
-    assert tuple(topologies.REGISTRY) == NAMES
+    assert tuple(topologies.REGISTRY)[:2] == NAMES
+    assert len(topologies.REGISTRY) == 7
     assert all(name == topology.name and topology.source for name, topology in topologies.REGISTRY.items())
     assert topologies.expand(["ladder"]) == NAMES
-    assert topologies.expand(["auto"]) == NAMES
+    assert topologies.expand(["auto"]) == tuple(topologies.REGISTRY)
     assert topologies.expand(["ladder-shunt", "ladder", "ladder-shunt"]) == NAMES[::-1]
     assert topologies.expand([]) == ()
 
