@@ -270,8 +270,17 @@ def _measured(
             highest_line_hz=float(np.max(job.low_hz[needing], initial=centre_hz)),
             nominal=nominal,
         ),
-        short_db=float(np.min((action.rejection_db - required_db)[needing], initial=np.inf)),
+        short_db=_least_spare_db(action, required_db),
     )
+
+
+def spare_db(built: Built, required_db: Array) -> float:
+    """Return the least of rejection less requirement over the lines that need any [dB]; infinite where none does."""
+    return _least_spare_db(built.action, required_db)
+
+
+def _least_spare_db(action: Action, required_db: Array) -> float:
+    return float(np.min((action.rejection_db - required_db)[required_db > 0], initial=np.inf))
 
 
 def meets(job: Job, built: Built) -> bool:

@@ -13,7 +13,7 @@ import numpy as np
 from harmonic_planner.filters import flags
 from harmonic_planner.model import Design, Proposal
 from harmonic_planner.parts.kits import Kit
-from harmonic_planner.planning.built import Built, meets, realise, sketch
+from harmonic_planner.planning.built import Built, meets, realise, sketch, spare_db
 from harmonic_planner.planning.choice import drawings, promise, settle_bandwidth
 from harmonic_planner.planning.jobs import Array, Job
 
@@ -64,6 +64,7 @@ def propose(
         Only changes that give every rejection asked of the stage, leave no limit of the chain worse off than it is
         while it is missed, and have fewer or milder flags than `chosen`.
     """
+    chosen = replace(chosen, short_db=spare_db(chosen, required_db))
     sound = meets(job, chosen)
     if chosen.verdict == "ok" and sound:
         return NO_ADVICE
