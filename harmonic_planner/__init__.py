@@ -1,3 +1,3 @@
 """Plans frequency-multiplier chains: spur budget, a filter for every stage, and whether each filter can be built."""
 
-__version__ = "0.1.0"
+__version__ = "0.2.0"
